@@ -1,0 +1,80 @@
+"""Small networks for tests, built in memory or read from a folder of tables."""
+
+from __future__ import annotations
+
+import csv
+import tomllib
+from dataclasses import fields
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+
+from compsize.study.records import (
+    Branches,
+    Buses,
+    Generators,
+    Growth,
+    Loads,
+    NetworkTables,
+    Shunts,
+    Svcs,
+)
+
+DATA = Path(__file__).parents[1] / "data" / "networks"
+
+BLANK: dict[type, dict[str, Any]] = {
+    Buses: {"kv": 1.0, "v_min_pu": 0.95, "v_max_pu": 1.05, "area": "", "monitored": True, "v_pu": np.nan}
+    | {"angle_deg": np.nan, "fault_mva": np.nan},
+    Loads: {"z_share_pct": 0.0, "i_share_pct": 0.0, "group": "", "status": True},
+    Branches: {"b_pu": 0.0, "tap": 1.0, "shift_deg": 0.0, "rating_mva": np.nan, "status": True, "regulated_bus": ""}
+    | {"v_target_pu": np.nan, "tap_min": np.nan, "tap_max": np.nan, "tap_steps": np.nan},
+    Generators: {"q_min_mvar": -np.inf, "q_max_mvar": np.inf, "p_max_mw": np.nan, "pickup": np.nan, "slack": False}
+    | {"status": True},
+    Shunts: {"g_mw": 0.0, "status": True},
+    Svcs: {"slope_pct": 0.0, "status": True},
+}
+
+
+def table(record: type, rows: list[dict[str, Any]]) -> Any:
+    """A table from rows that leave out what is blank."""
+    columns: dict[str, Any] = {}
+    for f in fields(record):
+        cells = [row.get(f.name, BLANK[record].get(f.name)) for row in rows]
+        if f.type == "Ids":
+            columns[f.name] = tuple(str(cell) for cell in cells)
+        elif f.type == "Bools":
+            columns[f.name] = np.array([cell in (True, "yes", "on", "1") for cell in cells], dtype=bool)
+        else:
+            columns[f.name] = np.array(cells, dtype=float)
+    return record(**columns)
+
+
+def network(base_mva: float = 100.0, **rows: list[dict[str, Any]]) -> NetworkTables:
+    """Tables from lists of rows named buses, loads, branches, generators, shunts, svcs."""
+    kinds = (Buses, Loads, Branches, Generators, Shunts, Svcs)
+    tables = {kind.__name__.lower(): table(kind, rows.get(kind.__name__.lower(), [])) for kind in kinds}
+    return NetworkTables(base_mva, 50.0, "", "", **tables)
+
+
+def read(name: str, folder: Path = DATA) -> NetworkTables:
+    """A network from a folder of CSV tables."""
+    rows = {}
+    for file in (folder / name).glob("*.csv"):
+        with file.open(newline="") as handle:
+            rows[file.stem] = [{k: v for k, v in row.items() if v != ""} for row in csv.DictReader(handle)]
+    return network(tomllib.loads((folder / name / "network.toml").read_text())["base_mva"], **rows)
+
+
+def everything(net: NetworkTables, **options: Any) -> Growth:
+    """Growth of all loads at their own power factor."""
+    on = [k for k, s in enumerate(net.loads.status) if s]
+    return Growth(
+        loads=tuple(net.loads.load[k] for k in on),
+        dp_mw=tuple(float(net.loads.p_mw[k]) for k in on),
+        dq_mvar=tuple(float(net.loads.q_mvar[k]) for k in on),
+        base_mw=float(sum(net.loads.p_mw[k] for k in on)),
+        description="all loads",
+        power_factor="as base",
+        **options,
+    )
