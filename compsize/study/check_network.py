@@ -182,9 +182,18 @@ def _check_one_value(
     return first
 
 
+def first_places(ids: Ids) -> dict[str, int]:
+    """Where each id stands first; blank ids, which are faults, are left out."""
+    index: dict[str, int] = {}
+    for at, name in enumerate(ids):
+        if name:
+            index.setdefault(name, at)
+    return index
+
+
 def connected_ends(draft: NetworkDraft) -> tuple[np.ndarray[tuple[int, ...], np.dtype[np.int64]], list[int]]:
     """Bus indices of the ends of every branch in service whose ends exist, and the branches' indices."""
-    index = {bus: at for at, bus in enumerate(draft.tables.buses.bus)}
+    index = first_places(draft.tables.buses.bus)
     branches = draft.tables.branches
     used: list[int] = []
     ends: list[tuple[int, int]] = []
@@ -200,7 +209,7 @@ def _check_connected(draft: NetworkDraft, faults: Faults) -> None:
     """Every bus must hang together with the slack over branches in service."""
     tables = draft.tables
     columns = draft.columns["buses"]
-    index = {bus: at for at, bus in enumerate(tables.buses.bus) if bus}
+    index = first_places(tables.buses.bus)
     slack = np.flatnonzero(tables.generators.slack & tables.generators.status)
     if len(slack) == 0 or tables.generators.bus[int(slack[0])] not in index:
         return
@@ -211,6 +220,8 @@ def _check_connected(draft: NetworkDraft, faults: Faults) -> None:
         return
     number = components(len(tables.buses.bus), ends)
     away = number != number[index[tables.generators.bus[int(slack[0])]]]
+    # A bus without a name, or that stands twice, has a fault already.
+    away &= np.array([index.get(bus) == at for at, bus in enumerate(tables.buses.bus)], dtype=np.bool_)
     if not away.any():
         return
     used = {bus for bus, on in zip(tables.loads.bus, tables.loads.status, strict=True) if on}

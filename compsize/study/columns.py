@@ -40,6 +40,8 @@ class Columns:
     """Text of the undeclared columns of an open-ended table."""
     given: frozenset[str] = frozenset()
     """Names of the columns that the file has."""
+    ragged: frozenset[int] = frozenset()
+    """Numbers of the rows of the wrong length."""
 
     def row(self, at: int) -> int | None:
         """Row number of the ``at``-th entry, counted from 0."""
@@ -75,7 +77,7 @@ def as_yes_no(text: str) -> bool | None:
 
 def read_columns(raw: RawTable, table: Table, references: References, faults: Faults) -> Columns:
     """Types every declared column of ``raw``, with a fault for each cell and name that is wrong."""
-    done = Columns(raw.file, raw.numbers, len(raw.rows), given=frozenset(raw.header))
+    done = Columns(raw.file, raw.numbers, len(raw.rows), given=frozenset(raw.header), ragged=raw.ragged)
     for name in raw.header:
         if name and name not in table.names:
             if table.open_ended:
@@ -122,14 +124,15 @@ def _read_column(
 
 @dataclass
 class _Where:
-    """Puts file, row and column to a fault of a cell."""
+    """Puts file, row and column to a fault of a cell; a row of the wrong length has its fault already."""
 
     done: Columns
     column: Column
     faults: Faults
 
     def fault(self, at: int, message: str, remedy: str) -> None:
-        self.faults.add(self.done.file, message, remedy, row=self.done.row(at), column=self.column.name)
+        if self.done.row(at) not in self.done.ragged:
+            self.faults.add(self.done.file, message, remedy, row=self.done.row(at), column=self.column.name)
 
 
 def _indices(cells: Iterable[str], wanted: str) -> list[int]:

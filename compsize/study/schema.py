@@ -146,5 +146,5 @@ def _closest(name: str, names: list[str]) -> str | None:
     plain: dict[str, str] = {}
     for valid in names:
         plain.setdefault(valid.casefold(), valid)
-    found = difflib.get_close_matches(name.casefold(), list(plain), n=1, cutoff=0.55)
+    found = difflib.get_close_matches(name.casefold(), list(plain), n=1, cutoff=0.5)
     return plain[found[0]] if found else None

@@ -20,12 +20,17 @@ __all__ = ["FolderSource", "RawTable", "Source", "parse_csv", "raw_from_records"
 
 @dataclass(frozen=True)
 class RawTable:
-    """Rows of trimmed text, all as long as the header; ``numbers`` are the rows' numbers in the file."""
+    """Rows of trimmed text, all as long as the header; ``numbers`` are the rows' numbers in the file.
+
+    ``ragged`` are the numbers of rows that were shorter or longer, for which a fault has been noted: they
+    are here, cut or filled with blanks, so that other rows may refer to them.
+    """
 
     file: str
     header: tuple[str, ...]
     rows: tuple[tuple[str, ...], ...]
     numbers: tuple[int, ...]
+    ragged: frozenset[int] = frozenset()
 
     def column(self, name: str) -> tuple[str, ...] | None:
         """The cells of a column, None where there is no such column."""
@@ -122,6 +127,7 @@ def raw_from_records(records: Sequence[Sequence[str]], file: str, faults: Faults
     _check_header(header, file, start + 1, faults)
     rows: list[tuple[str, ...]] = []
     numbers: list[int] = []
+    ragged: set[int] = set()
     for number, record in enumerate(trimmed[start + 1 :], start + 2):
         if not any(record):
             continue
@@ -132,10 +138,10 @@ def raw_from_records(records: Sequence[Sequence[str]], file: str, faults: Faults
                 "Give every row one cell per column; quote cells that hold the delimiter.",
                 row=number,
             )
-            continue
-        rows.append(record[:width])
+            ragged.add(number)
+        rows.append((record + ("",) * width)[:width])
         numbers.append(number)
-    return RawTable(file, tuple(header), tuple(rows), tuple(numbers))
+    return RawTable(file, tuple(header), tuple(rows), tuple(numbers), frozenset(ragged))
 
 
 def _check_header(header: list[str], file: str, row: int, faults: Faults) -> None:
