@@ -216,7 +216,7 @@ def _check_connected(draft: NetworkDraft, faults: Faults) -> None:
     ends, _ = connected_ends(draft)
     # A branch with a faulty end would make its neighbourhood look cut off.
     branches = tables.branches
-    if any(not a or not b for a, b in zip(branches.from_bus, branches.to_bus, strict=True)):
+    if any(not a or not b or a == b for a, b in zip(branches.from_bus, branches.to_bus, strict=True)):
         return
     number = components(len(tables.buses.bus), ends)
     away = number != number[index[tables.generators.bus[int(slack[0])]]]

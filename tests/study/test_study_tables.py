@@ -9,13 +9,12 @@ import numpy as np
 import openpyxl
 import pytest
 from openpyxl.styles import numbers
+from study_helpers import same
 
 from compsize.errors import InputError
 from compsize.study.files import Faults
 from compsize.study.new import write_network
 from compsize.study.read_network import read_network
-from compsize.study.records import NetworkTables
-from compsize.study.schema_tables import NETWORK_TABLES
 from compsize.study.tables import parse_csv
 
 TINY = {
@@ -37,24 +36,6 @@ def make(folder: Path, **changes: str | bytes | None) -> Path:
         if content is not None:
             (folder / name).write_bytes(content if isinstance(content, bytes) else content.encode())
     return folder
-
-
-def same(one: NetworkTables, other: NetworkTables) -> None:
-    """Fails where any cell of two networks differs, NaN and signs of zero included."""
-    assert (one.base_mva, one.frequency_hz, one.title, one.source) == (
-        other.base_mva,
-        other.frequency_hz,
-        other.title,
-        other.source,
-    )
-    for name in NETWORK_TABLES:
-        for column, values in vars(getattr(one, name)).items():
-            found = getattr(getattr(other, name), column)
-            if isinstance(values, tuple):
-                assert found == values, (name, column)
-            else:
-                assert found.dtype == values.dtype
-                assert found.tobytes() == values.tobytes(), (name, column)
 
 
 def only(path: Path) -> str:
