@@ -1,0 +1,167 @@
+"""Limits of devices along the curve: which are violated, which comes next, which way a switch goes."""
+
+from __future__ import annotations
+
+import numpy as np
+
+from compsize.flow.equations import factorise, loading_column, reactive_slope, residual
+from compsize.flow.jit import kernel
+from compsize.flow.lu import solve
+from compsize.nose.newton import ALPHA, FACTORS, LAM, PIECE, PIN, SIGN, SOLVES, floating, newton
+
+LIMIT_TOLERANCE = 1e-9
+
+
+@kernel
+def support_step(case, i, s, above):  # type: ignore[no-untyped-def]
+    """Change of segment (+1 more support, -1 less) when the floating quantity leaves its range at that end."""
+    k = case.tapof[i]
+    if case.hold[s]:
+        up = above if k < 0 or case.tapval[k, 5] > 0.0 else not above
+    else:
+        up = not above
+    return 1 if up else -1
+
+
+@kernel
+def excess(case, state, i):  # type: ignore[no-untyped-def]
+    """How far node ``i`` is outside its segment (negative: inside), and the change of segment that cures it."""
+    s = case.segptr[i] + state.seg[i]
+    z = floating(case, state, i)
+    over, under = z - case.high[s], case.low[s] - z
+    if over >= under:
+        return over, support_step(case, i, s, True)
+    return under, support_step(case, i, s, False)
+
+
+@kernel
+def earliest(case, state, work, skip, lam0):  # type: ignore[no-untyped-def]
+    """Of the devices outside their segment the one that crossed first, by linear interpolation from the saved point.
+
+    Returns node (-1: none), fraction of the step, and the bound it crossed. ``work.sec`` holds, per node, the
+    inside distances at the saved point (low, high).
+    """
+    found = -1
+    best = 2.0
+    bound = 0.0
+    for m in range(case.dev.size):
+        i = case.dev[m]
+        if i == skip:
+            continue
+        s = case.segptr[i] + state.seg[i]
+        z = floating(case, state, i)
+        out = z - case.high[s]
+        if out > LIMIT_TOLERANCE:
+            before = max(work.sec[2 * i + 1], 0.0)
+            frac = before / (before + out)
+            if frac < best:
+                best, found, bound = frac, i, case.high[s]
+        out = case.low[s] - z
+        if out > LIMIT_TOLERANCE:
+            before = max(work.sec[2 * i], 0.0)
+            frac = before / (before + out)
+            if frac < best:
+                best, found, bound = frac, i, case.low[s]
+    return found, best, bound
+
+
+@kernel
+def first_root(d0, d1, d2):  # type: ignore[no-untyped-def]
+    """Smallest s >= 0 with d0 + d1 s + d2 s^2 / 2 <= 0 (d0 >= 0 inside; a distance of zero leaving inwards returns later)."""
+    tiny = LIMIT_TOLERANCE
+    if d0 <= tiny:
+        if d1 < 0.0:
+            return 0.0
+        return -2.0 * d1 / d2 if d2 < 0.0 else np.inf
+    disc = d1 * d1 - 2.0 * d2 * d0
+    if disc < 0.0:
+        return np.inf
+    root = np.sqrt(disc)
+    if d1 <= 0.0:
+        low = root - d1
+        return 2.0 * d0 / low if low > 0.0 else np.inf
+    return (d1 + root) / -d2 if d2 < 0.0 else np.inf
+
+
+@kernel
+def settle(pattern, case, state, factors, work, target, rounds):  # type: ignore[no-untyped-def]
+    """Solve at the loading ``target`` and bring every device into a segment that fits; 0 done, 1 failed.
+
+    The equations are solved before any limit is looked at; then all violated devices switch for two rounds,
+    later only the worst, each way allowed.
+    """
+    real, whole = work.real, work.whole
+    whole[PIN] = -1
+    real[ALPHA] = 0.0
+    real[LAM] = target
+    for turn in range(rounds):
+        if newton(pattern, case, state, factors, work, 0, -1, target, False, 25 if turn == 0 else 15, True) != 0:
+            return 1
+        worst = 0.0
+        chosen = -1
+        step = 0
+        count = 0
+        for m in range(case.dev.size):
+            i = case.dev[m]
+            out, move = excess(case, state, i)
+            if out > LIMIT_TOLERANCE:
+                count += 1
+                s = case.segptr[i] + state.seg[i]
+                weight = 1.0 if case.hold[s] and case.tapof[i] < 0 else 10.0
+                if turn < 2:
+                    state.seg[i] += move
+                elif weight * out > worst:
+                    worst, chosen, step = weight * out, i, move
+        if count == 0:
+            return 0
+        if turn >= 2:
+            state.seg[chosen] += step
+    return 1
+
+
+@kernel
+def response(pattern, case, state, factors, work, i, old):  # type: ignore[no-untyped-def]
+    """Ratio of det J with node ``i`` in segment ``old`` to det J as factorised (a rank-one change of one row)."""
+    pin, alpha = work.whole[PIN], work.real[ALPHA]
+    lam = work.real[LAM]
+    z = work.y_f
+    z[:] = 0.0
+    z[2 * i + 1] = 1.0
+    solve(pattern, factors, z)
+    work.whole[SOLVES] += 1
+    if alpha != 0.0:
+        k = 2 * pin + 1
+        scale = alpha * z[k] / (1.0 - alpha * work.y_e[k])
+        for m in range(z.size):
+            z[m] += scale * work.y_e[m]
+    s = case.segptr[i] + old
+    tap = case.tapof[i]
+    if tap >= 0:
+        return z[2 * case.taps[tap, 3] + 1] if case.hold[s] else z[2 * i + 1]
+    if case.hold[s]:
+        return z[2 * i + 1]
+    slope = reactive_slope(pattern, case, state, lam, i, z, 0.0)
+    return slope - (case.coef[s, 1] + 2.0 * case.coef[s, 2] * state.v[i]) * z[2 * i + 1]
+
+
+@kernel
+def refactor(pattern, case, state, factors, work):  # type: ignore[no-untyped-def]
+    """Factors, loading column and pinned column at the present state; the sign of det J (0: singular)."""
+    real, whole = work.real, work.whole
+    pin, alpha = whole[PIN], real[ALPHA]
+    residual(pattern, case, state, real[LAM], whole[PIECE], work.res)
+    sign = factorise(pattern, case, state, real[LAM], factors, pin, alpha)
+    whole[FACTORS] += 1
+    if sign == 0.0:
+        return 0.0
+    loading_column(case, state, whole[PIECE], work.load)
+    work.y_l[:] = work.load
+    solve(pattern, factors, work.y_l)
+    if alpha != 0.0:
+        work.y_e[:] = 0.0
+        work.y_e[2 * pin + 1] = 1.0
+        solve(pattern, factors, work.y_e)
+        if 1.0 - alpha * work.y_e[2 * pin + 1] < 0.0:
+            sign = -sign
+    real[SIGN] = sign
+    return sign
