@@ -12,7 +12,7 @@ from compsize.study.schema import Table
 from compsize.study.schema_tables import NETWORK_TABLES
 from compsize.study.tables import RawTable
 
-__all__ = ["NetworkDraft", "build_network", "empty_columns"]
+__all__ = ["NetworkDraft", "build_network", "draft_from_raw", "empty_columns"]
 
 
 @dataclass(frozen=True)
@@ -114,3 +114,24 @@ def build_network(
         status=svc.flags["status"],
     )
     return NetworkTables(base_mva, frequency_hz, title, source, buses, loads, branches, generators, shunts, svcs)
+
+
+def draft_from_raw(
+    raw: Mapping[str, RawTable],
+    file: str,
+    faults: Faults,
+    *,
+    base_mva: float,
+    frequency_hz: float,
+    title: str,
+    source: str,
+) -> NetworkDraft:
+    """Types tables that were made from another format; absent tables are empty, ``file`` names them all."""
+    references = References()
+    columns: dict[str, Columns] = {}
+    for name, table in NETWORK_TABLES.items():  # buses come first, the others refer to them
+        there = raw.get(name) or RawTable(file, table.names, (), ())
+        columns[name] = read_columns(there, table, references, faults)
+        references.ids[name] = frozenset(columns[name].texts[table.key.name]) - {""}
+    tables = build_network(columns, base_mva, frequency_hz, title, source)
+    return NetworkDraft(tables, columns, frozenset())

@@ -24,7 +24,7 @@ __all__ = ["draft_network", "read_network"]
 def read_network(path: str | os.PathLike[str]) -> NetworkTables:
     """Reads and checks a network.
 
-    :param path: a folder of CSV tables, or an .xlsx with the same sheets.
+    :param path: a folder of CSV tables, an .xlsx with the same sheets, or an IEEE CDF file.
     :raises InputError: with every fault of the network at once.
     """
     place = Path(path)
@@ -53,12 +53,13 @@ def draft_network(path: Path, name: str, reader: FileReader) -> NetworkDraft | N
     if ending in (".xlsx", ".xlsm"):
         book = open_workbook(path, name, reader, {"network", *NETWORK_TABLES})
         return None if book is None else _draft_tables(book, faults)
-    if ending in (".xls", ".ods", ".csv", ".toml", ".xml"):
+    if ending in (".zip", ".xls", ".ods", ".csv", ".toml", ".xml"):
         remedy = "Name a folder of tables, an .xlsx, an IEEE CDF file, or a CGMES folder or zip."
         faults.add(name, f"a network cannot be read from a {ending} file.", remedy)
         return None
-    faults.add(name, "this kind of file is not read yet.", "Name a folder of tables or an .xlsx.")
-    return None
+    from compsize.study.cdf import draft_cdf
+
+    return draft_cdf(path, name, reader)
 
 
 @dataclass(frozen=True)
