@@ -131,9 +131,7 @@ def _compensators(
         slope = float(table.slope_pct[k]) / 100.0
         rating = high if high > 0.0 else max(-low, 1e-12)
         found.append(
-            Device(
-                table.svc[k], kind, number[table.bus[k]], low, high, float(table.v_ref_pu[k]), slope=slope, rating=rating
-            )
+            Device(table.svc[k], kind, number[table.bus[k]], low, high, float(table.v_ref_pu[k]), slope, rating)
         )
     for item in added:
         if item.kind not in ("bank", "svc", "statcom"):

@@ -52,6 +52,7 @@ class Equations:
         d = model.devices
         self.bus = np.array([x.bus for x in d], dtype=np.int64)
         self.kind = np.array([x.kind for x in d], dtype=np.int64)
+        self._is = tuple((self.kind == kind).astype(float) for kind in (GENERATOR, SVC, STATCOM))
         self.low = np.array([x.low for x in d], dtype=float)
         self.high = np.array([x.high for x in d], dtype=float)
         self.set = np.array([x.set_pu for x in d], dtype=float)
@@ -75,7 +76,8 @@ class Equations:
         rows = [e.row, e.row, n + e.row, n + e.row, i, i, n + i, n + i]
         cols = [e.col, n + e.col, e.col, n + e.col, i, n + i, i, n + i]
         rows += [n + self.bus, 2 * n + device, 2 * n + device, e.row[move], n + e.row[move], i, n + i]
-        cols += [2 * n + device, n + self.bus, 2 * n + device, owner, owner, np.full(n, self.size), np.full(n, self.size)]
+        cols += [2 * n + device, n + self.bus, 2 * n + device, owner, owner]
+        cols += [np.full(n, self.size), np.full(n, self.size)]
         rows.append(np.array([slack]))
         cols.append(np.array([slack]))
         row, col = np.concatenate(rows), np.concatenate(cols)
@@ -103,20 +105,20 @@ class Equations:
     def _injection(self, v: Floats, u: Floats) -> tuple[Floats, Floats, Floats]:
         """Q [pu] each device injects, and its derivatives by V and u."""
         vd = v[self.bus]
-        q = np.select([self.kind == GENERATOR, self.kind == SVC, self.kind == STATCOM], [u, u * vd**2, u * vd], 0.0)
-        by_v = np.select([self.kind == SVC, self.kind == STATCOM], [2.0 * u * vd, u], 0.0)
-        by_u = np.select([self.kind == GENERATOR, self.kind == SVC, self.kind == STATCOM], [1.0, vd**2, vd], 0.0)
+        generator, svc, statcom = self._is
+        q = (generator + svc * vd**2 + statcom * vd) * u
+        by_v = (2.0 * svc * vd + statcom) * u
+        by_u = generator + svc * vd**2 + statcom * vd
         return q, by_v, by_u
 
     def _rule(self, v: Floats, u: Floats, modes: Modes) -> tuple[Floats, Floats, Floats]:
         """Device equations and their derivatives by V and u."""
         vd = v[self.bus]
-        svc = self.kind == SVC
-        excess = np.where(
-            svc, vd * (1.0 + self.droop * u), vd + self.gain * self.droop * (u - self.neutral)
-        ) - self.set
-        by_v = np.where(svc, 1.0 + self.droop * u, 1.0)
-        by_u = np.where(svc, self.droop * vd, self.gain * self.droop)
+        svc = self._is[1]
+        linear = (1.0 - svc) * self.gain * self.droop * (u - self.neutral)
+        excess = vd * (1.0 + svc * self.droop * u) + linear - self.set
+        by_v = 1.0 + svc * self.droop * u
+        by_u = self.droop * (svc * vd + (1.0 - svc) * self.gain)
         free = modes == 0
         limit = np.where(modes > 0, self.high, self.low)
         value = np.where(free, excess, u - np.where(free, 0.0, limit))
@@ -184,7 +186,7 @@ class Equations:
         return Factor(square, column, k)
 
     def solve(
-        self, y: Floats, modes: Modes, segment: int, k: int = -1, rounds: int = 20, cap: float = np.inf
+        self, y: Floats, modes: Modes, segment: int, k: int = -1, *, rounds: int = 20, cap: float = np.inf
     ) -> Floats | None:
         """Newton with unknown ``k`` (default: the loading) kept as it is; None where it does not converge.
 
@@ -274,7 +276,7 @@ class Factor:
         return -self.sign() if (len(self.column) + self.k) % 2 else self.sign()
 
 
-def _parity(permutation: NDArray[np.int32]) -> int:
+def _parity(permutation: NDArray[np.signedinteger]) -> int:
     """+1 for an even permutation, -1 for an odd one."""
     order = permutation.tolist()
     seen = [False] * len(order)

@@ -38,11 +38,8 @@ class InService:
 
 
 def largest_unit(generators: Generators, on: Bools) -> int | None:
-    """Row of the largest unit in service: by p_max_mw, by p_mw where that is blank; first of equals."""
-    if not on.any():
-        return None
-    size = np.where(np.isnan(generators.p_max_mw), generators.p_mw, generators.p_max_mw)
-    return int(np.argmax(np.where(on, size, -np.inf)))
+    """Row of the unit in service that gives most MW today; the first of equals."""
+    return int(np.argmax(np.where(on, generators.p_mw, -np.inf))) if on.any() else None
 
 
 def in_service(network: NetworkTables, lost: Iterable[tuple[str, str]]) -> InService | NotEvaluable:
@@ -87,7 +84,8 @@ def in_service(network: NetworkTables, lost: Iterable[tuple[str, str]]) -> InSer
             notes.append("dropped: " + " ".join(names))
 
     def on(buses: tuple[str, ...], status: Bools) -> Bools:
-        return status & np.array([kept[index[bus]] for bus in buses], dtype=bool)
+        there: Bools = np.array([kept[index[bus]] for bus in buses], dtype=bool)
+        return np.where(there, status, False)
 
     return InService(
         buses=kept,

@@ -22,6 +22,7 @@ from compsize.study.records import (
 )
 
 DATA = Path(__file__).parents[1] / "data" / "networks"
+CDF = Path(__file__).parents[3] / "shared" / "data" / "ieee_cdf"
 
 BLANK: dict[type, dict[str, Any]] = {
     Buses: {"kv": 1.0, "v_min_pu": 0.95, "v_max_pu": 1.05, "area": "", "monitored": True, "v_pu": np.nan}
@@ -77,4 +78,57 @@ def everything(net: NetworkTables, **options: Any) -> Growth:
         description="all loads",
         power_factor="as base",
         **options,
+    )
+
+
+def read_cdf(name: str) -> NetworkTables:
+    """A network from a file in the IEEE common data format (fixed columns), its solved state left out."""
+    lines = (CDF / name).read_text().splitlines()
+    base = float(lines[0][31:37])
+    first = next(k for k, line in enumerate(lines) if line.startswith("BUS DATA"))
+    second = next(k for k, line in enumerate(lines) if line.startswith("BRANCH DATA"))
+    rows: dict[str, list[dict[str, Any]]] = {k: [] for k in ("buses", "loads", "branches", "generators", "shunts")}
+    for line in lines[first + 1 :]:
+        if line.startswith("-999"):
+            break
+        bus, kind = line[0:4].strip(), int(line[24:26])
+        p, q, p_gen, set_pu = (float(line[a:b]) for a, b in ((40, 49), (49, 59), (59, 67), (84, 90)))
+        high, low, g, b = (float(line[a:b]) for a, b in ((90, 98), (98, 106), (106, 114), (114, 122)))
+        rows["buses"].append({"bus": bus})
+        if p or q:
+            rows["loads"].append({"load": f"L{bus}", "bus": bus, "p_mw": p, "q_mvar": q})
+        if kind >= 2:
+            limits = {} if kind == 3 else {"q_min_mvar": low, "q_max_mvar": high}
+            unit = {"generator": f"G{bus}", "bus": bus, "p_mw": p_gen, "v_set_pu": set_pu, "slack": kind == 3}
+            rows["generators"].append(unit | limits)
+        if g or b:
+            rows["shunts"].append({"shunt": f"S{bus}", "bus": bus, "b_mvar": b * base, "g_mw": g * base})
+    for number, line in enumerate(lines[second + 1 :]):
+        if line.startswith("-999"):
+            break
+        r, x, b, tap = (float(line[a:b]) for a, b in ((19, 29), (29, 40), (40, 50), (76, 82)))
+        ends = {"from_bus": line[0:4].strip(), "to_bus": line[5:9].strip()}
+        rows["branches"].append({"branch": str(number + 1), "r_pu": r, "x_pu": x, "b_pu": b, "tap": tap or 1.0} | ends)
+    return network(base, **rows)
+
+
+def two_buses(
+    x: tuple[float, ...] = (0.5,),
+    r: float = 0.0,
+    p: float = 10.0,
+    power_factor: float = 1.0,
+    e: float = 1.0,
+    **load: Any,
+) -> NetworkTables:
+    """A source ``e`` [pu] at bus S behind parallel lines of reactance ``x`` [pu], a load of ``p`` MW at bus L."""
+    q = p * np.sqrt(1.0 / power_factor**2 - 1.0)
+    lines = [
+        {"branch": f"line{k + 1}", "from_bus": "S", "to_bus": "L", "r_pu": r, "x_pu": value}
+        for k, value in enumerate(x)
+    ]
+    return network(
+        buses=[{"bus": "S"}, {"bus": "L"}],
+        loads=[{"load": "D", "bus": "L", "p_mw": p, "q_mvar": q} | load],
+        branches=lines,
+        generators=[{"generator": "G", "bus": "S", "p_mw": p, "v_set_pu": e, "slack": True}],
     )
