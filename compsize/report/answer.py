@@ -12,10 +12,12 @@ __all__ = ["answer_of", "cost_decimals", "currency_of", "figures_of", "mvar_deci
 
 
 def currency_of(result: SizeResult) -> str:
+    """The currency as ``[report]`` states it, or nothing."""
     return dict(result.report).get("currency", "")
 
 
 def cost_decimals(result: SizeResult) -> int:
+    """Places for every cost of the report: none where all are whole."""
     costs = [result.cost, *(runner.cost for runner in result.runners_up)]
     if result.plan is not None:
         costs += [row.cost for row in result.plan.rows] + [cost for _, cost in result.plan.site_costs]
@@ -91,6 +93,7 @@ def _with_currency(result: SizeResult, text: str) -> str:
 
 
 def figures_of(result: SizeResult) -> Figures:
+    """Cost, bound, gap, kind of proof, what is added and how many cases are met."""
     decimals, currency = cost_decimals(result), currency_of(result)
     none = "\N{EN DASH}"
     bound = shown_bound(result.cost_bound, result.cost, decimals)
@@ -108,9 +111,11 @@ def figures_of(result: SizeResult) -> Figures:
     cases = result.cases_after or result.cases_before
     if cases:
         met = sum(case.met for case in cases)
-        figures.append(Figure("Cases met", f"{met:,} of {len(cases):,}"))
+        label = state_labels(result)[1 if result.cases_after else 0]
+        figures.append(Figure("Cases met", f"{met:,} of {len(cases):,}", "", (label[0].lower() + label[1:],)))
     return Figures(tuple(figures))
 
 
 def mvar_decimals(plan: Plan) -> int:
+    """Places for Mvar that lose nothing of the plan's steps."""
     return decimals_for(value for row in plan.rows for value in (row.step_mvar, row.total_mvar))

@@ -37,7 +37,8 @@ __all__ = [
 ]
 
 Tone = Literal["good", "warn", "bad", "plain"]
-ColumnKind = Literal["id", "text", "number", "verdict"]
+ColumnKind = Literal["id", "quote", "text", "number", "verdict"]
+"""A name of the study, a sentence that may hold some, the report's own words, a number, yes or no."""
 
 
 @dataclass(frozen=True)

@@ -80,8 +80,10 @@ def worst_first(pairs: Sequence[CasePair]) -> list[CasePair]:
 
 
 def binding(cases: Sequence[CaseMargin]) -> frozenset[str]:
-    """Cases that are met with the least to spare; several where they are equal to 1e-6 of the base."""
-    met = [case for case in cases if case.met and case.margin_mw is not None and case.required_mw is not None]
+    """Cases that are met with the least to spare, once all are met; several if equal to 1e-6 of the base."""
+    if not all(case.met for case in cases):
+        return frozenset()
+    met = [case for case in cases if case.margin_mw is not None and case.required_mw is not None]
     if not met:
         return frozenset()
     least = min(surplus(case) for case in met)
@@ -131,17 +133,15 @@ def margins_table(key: str, caption: Words, pairs: Sequence[CasePair], labels: t
             row += [Cell(None, DASH)] * 3 if state is None else _state_cells(state, next(texts), decimals)
         rows.append(tuple(row))
         marks.append("not met" if not case.met else "binding" if case.case in tight else "")
-    notes: list[Words] = [
-        (
-            "Worst first: cases that miss their requirement, then by what is left beyond it. ",
-            "MW are nominal (at 1 pu) and count the load that grows.",
-        ),
-    ]
+    note = (
+        "Worst first: cases that miss their requirement, then by what is left beyond it. "
+        "MW are nominal (at 1 pu) and count the load that grows."
+    )
     if tight:
-        notes.append(("Binding: met with the least to spare.",))
+        note += " Binding: met with the least to spare."
     if any(case.nose_kind == "none" for case in cases):
-        notes.append(("\N{GREATER-THAN OR EQUAL TO}: no turn was found up to this loading.",))
-    return Table(key, caption, tuple(columns), tuple(rows), tuple(marks), notes=tuple(notes), basis=basis)
+        note += " \N{GREATER-THAN OR EQUAL TO}: no turn was found up to this loading."
+    return Table(key, caption, tuple(columns), tuple(rows), tuple(marks), notes=((note,),), basis=basis)
 
 
 def _state_cells(case: CaseMargin, margin: str, decimals: int) -> list[Cell]:
@@ -165,13 +165,13 @@ def details_table(key: str, caption: Words, cases: Sequence[CaseMargin], basis: 
         Column("case", "Case", "id"),
         Column("margin_pct", "Margin", "number", "%", decimals=2),
         Column("nose_kind", "Kind of nose"),
-        Column("weakest_bus", "Bus", "id", "", "Fastest falling"),
-        Column("weakest_v_pu", "Voltage", "number", "pu", "Fastest falling", 4),
-        Column("lowest_bus", "Bus", "id", "", "Lowest"),
-        Column("lowest_v_pu", "Voltage", "number", "pu", "Lowest", 4),
+        Column("weakest_bus", "Name", "id", "", "Fastest falling bus"),
+        Column("weakest_v_pu", "Voltage", "number", "pu", "Fastest falling bus", 4),
+        Column("lowest_bus", "Name", "id", "", "Lowest bus"),
+        Column("lowest_v_pu", "Voltage", "number", "pu", "Lowest bus", 4),
         Column("limited_devices", "At a limit", "id"),
         *([Column("steps_off", "Steps off", "id")] if with_off else []),
-        Column("status", "Remark", "id"),
+        Column("status", "Remark", "quote"),
     ]
     rows = []
     for pair in worst_first([CasePair(None, case) for case in cases]):

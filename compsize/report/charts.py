@@ -54,7 +54,7 @@ class Format:
     labels_beside: bool
 
 
-WIDE = Format("wide", 820, 5, True)
+WIDE = Format("wide", 900, 5, True)
 NARROW = Format("narrow", 350, 2, False)
 
 
@@ -69,7 +69,7 @@ def bars_svg(bars: Bars, size: Format, ident: str) -> str:
 
 
 def _curves(chart: CurveChart, size: Format) -> Figure:
-    head, height = (86, 430) if size.labels_beside else (122, 400)
+    head, height = (70, 420) if size.labels_beside else (104, 380)
     figure, axes = _figure(size.width, height, left=62, right=14, top=head, bottom=48)
     for curve in chart.curves:
         colour, dashes = (AFTER, "solid") if curve.after else (BEFORE, (0, (6, 3)))
@@ -96,7 +96,7 @@ def _curves(chart: CurveChart, size: Format) -> Figure:
         to_left = (mw - low) / (high - low) > 0.55
         axes.annotate(
             words, (mw, 1), (-4 if to_left else 4, lift), xycoords=axes.get_xaxis_transform(),
-            textcoords="offset points", ha="right" if to_left else "left", fontsize=11, color=INK,
+            textcoords="offset points", ha="right" if to_left else "left", fontsize=11, color=INK, zorder=6,
         )  # fmt: skip
     axes.set_xlabel("Load that grows [MW]")
     axes.set_ylabel("Voltage [pu]")
@@ -116,22 +116,29 @@ def _bars(bars: Bars, size: Format) -> Figure:
     states = bars.has_before + bars.has_after
     thick = 11.0
     row_height = states * thick + (14 if size.labels_beside else 30)
-    head = 44 if size.labels_beside else 74
+    head = 36 if size.labels_beside else 50
     height = int(head + len(bars.rows) * row_height + 46)
     left = 216 if size.labels_beside else 12
     figure, axes = _figure(size.width, height, left=left, right=24, top=head, bottom=46)
+    values = [v for row in bars.rows for v in (row.before, row.after, row.required, 0.0) if v is not None]
+    low, high = min(values, default=0.0), max(values, default=1.0)
+    room = 0.14 if size.labels_beside else 0.22  # for the figures at the ends of the bars
+    span = (high - low) or 1.0
+    axes.set_xlim(low - (room * span if low < 0 else 0), high + room * span)
+    left_end, right_end = axes.get_xlim()
+    per_pixel = (right_end - left_end) / (size.width - left - 24)
     for number, row in enumerate(bars.rows):
         top = number * row_height + (4 if size.labels_beside else 20)
         name = ("\N{BALLOT X} " if not row.met else "") + _label(row.case)
         if size.labels_beside:
             axes.annotate(
                 name, (0, top + states * thick / 2), (-10, 0), xycoords=axes.get_yaxis_transform(),
-                textcoords="offset points", ha="right", va="center", fontsize=12,
+                textcoords="offset points", ha="right", va="center", fontsize=12, zorder=6,
             )  # fmt: skip
         else:
             axes.annotate(
                 name, (0, top), (0, 5), xycoords=axes.get_yaxis_transform(),
-                textcoords="offset points", ha="left", va="baseline", fontsize=12,
+                textcoords="offset points", ha="left", va="baseline", fontsize=12, zorder=6,
             )  # fmt: skip
         at = top
         for shown, value, text, after in (
@@ -142,18 +149,16 @@ def _bars(bars: Bars, size: Format) -> Figure:
                 continue
             if value is not None:
                 axes.barh(at + thick / 2, value, thick - 2, **_bar_style(after, bars), zorder=3)
+                end, way = value, 1 if value >= 0 else -1
+                if row.required is not None and 0 <= way * (row.required - value) < (7 * len(text) + 8) * per_pixel:
+                    end = row.required  # the figure stands clear of the mark
                 axes.annotate(
-                    text, (value, at + thick / 2), (4 if value >= 0 else -4, 0), textcoords="offset points",
-                    ha="left" if value >= 0 else "right", va="center", fontsize=10, color=QUIET, zorder=5,
+                    text, (end, at + thick / 2), (4 * way, 0), textcoords="offset points",
+                    ha="left" if way > 0 else "right", va="center", fontsize=10, color=QUIET, zorder=6,
                 )  # fmt: skip
             at += thick
         if row.required is not None:
             axes.plot([row.required] * 2, [top - 2, top + states * thick + 2], color=INK, linewidth=2.6, zorder=4)
-    values = [v for row in bars.rows for v in (row.before, row.after, row.required, 0.0) if v is not None]
-    low, high = min(values, default=0.0), max(values, default=1.0)
-    room = 0.14 if size.labels_beside else 0.22  # for the figures at the ends of the bars
-    span = (high - low) or 1.0
-    axes.set_xlim(low - (room * span if low < 0 else 0), high + room * span)
     axes.set_ylim(len(bars.rows) * row_height, 0)
     axes.set_yticks([])
     axes.spines["left"].set_visible(False)

@@ -28,7 +28,7 @@ def voltage_blocks(result: SizeResult) -> Iterator[Block]:
         Column("limit", "Limit", "number"),
         Column("unit", "Unit"),
         Column("met", "Met", "verdict"),
-        Column("note", "Remark", "id"),
+        Column("note", "Remark", "quote"),
     )
     rows = []
     for check in checks[: max(MOST_VOLTAGES, failing)]:
@@ -79,9 +79,9 @@ def proof_blocks(result: SizeResult) -> Iterator[Block]:
         yield Paragraph((f"{cheaper} less {reference}.",))
     if proof.parts:
         columns = (
-            Column("means", "Excluded by", "id"),
+            Column("means", "Excluded by", "quote"),
             Column("plans", "Plans", "number"),
-            Column("assumption", "Assumes", "id"),
+            Column("assumption", "Assumes", "quote"),
             Column("tests", "Tests of it", "number"),
             Column("tests_failed", "Tests failed", "number"),
         )
@@ -123,7 +123,7 @@ def verification_blocks(result: SizeResult) -> Iterator[Block]:
             Column("equipment", "Equipment", "id"),
             Column("steps", "Steps then", "number"),
             Column("cost", "Cost then", "number", currency_of(result), decimals=decimals),
-            Column("breaks", "What breaks, or why it saves nothing", "id"),
+            Column("breaks", "What breaks, or why it saves nothing", "quote"),
         )
         rows = tuple(
             (
@@ -151,7 +151,7 @@ def runners_up_table(result: SizeResult) -> Table:
             else []
         ),
         Column("meets", "Meets all", "verdict"),
-        Column("note", "Remark", "id"),
+        Column("note", "Remark", "quote"),
     ]
     rows = []
     for runner in result.runners_up:

@@ -31,12 +31,17 @@ def table_csv(records: Sequence[Any], record: type) -> str:
     text: whoever reads the file by a program must get the id of the study back.
     """
     columns = table_columns(record)
-    stream = io.StringIO(newline="")
-    writer = csv.writer(stream, lineterminator="\n")
-    writer.writerow(columns)
+    lines = [_line(columns)]
     for number, row in enumerate(table_rows(records), start=2):
-        writer.writerow([_cell(row[column], f"row {number}, {column}") for column in columns])
-    return stream.getvalue()
+        lines.append(_line([_cell(row[column], f"row {number}, {column}") for column in columns]))
+    return "".join(lines)
+
+
+def _line(cells: Sequence[str]) -> str:
+    # The writer quotes a carriage return in a name only while one is part of its line ends.
+    stream = io.StringIO(newline="")
+    csv.writer(stream, lineterminator="\r\n").writerow(cells)
+    return stream.getvalue().removesuffix("\r\n") + "\n"
 
 
 def _cell(value: Any, where: str) -> str:

@@ -70,11 +70,7 @@ def shown_row(
     if limit is None:
         return [shown(value, decimals) for value, _ in values], ""
     sign = 1 if sense == "at least" else -1
-    judged = [
-        _Judged(value, sign * value >= sign * limit if met is None else met)
-        for value, met in values
-        if value is not None
-    ]
+    judged = [_judged(value, met, limit, sign) for value, met in values if value is not None]
     strict = [item for item in judged if (sign * item.value >= sign * limit) == item.met]
     tolerated = [item for item in judged if item.met and sign * item.value < sign * limit]
     for kept in (strict + tolerated, strict):
@@ -120,13 +116,20 @@ def decimals_for(values: Iterable[float | None], fewest: int = 0, most: int = 2)
 class _Judged:
     value: float
     met: bool
+    falls_short: bool
+    """Not met because of the number itself."""
 
     def at(self, places: int, bound: Decimal, sign: int) -> Decimal:
         """Rounded to the nearest, but away from the bound where a miss would reach it."""
         number = _round(self.value, places, ROUND_HALF_EVEN)
-        if not self.met and sign * number >= sign * bound:
+        if self.falls_short and sign * number >= sign * bound:
             number = _round(self.value, places, ROUND_FLOOR if sign > 0 else ROUND_CEILING)
         return number
+
+
+def _judged(value: float, met: bool | None, limit: float, sign: int) -> _Judged:
+    reaches = sign * value >= sign * limit
+    return _Judged(value, reaches if met is None else met, not reaches and not met)
 
 
 def _round(value: float, decimals: int, way: str) -> Decimal:

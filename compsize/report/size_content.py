@@ -9,7 +9,6 @@ from compsize.report.answer import cost_decimals, currency_of, figures_of, mvar_
 from compsize.report.blocks import Block, Cell, Column, Paragraph, Section, Table, Words
 from compsize.report.cases import (
     bars_of,
-    binding,
     curves_of,
     details_table,
     margins_table,
@@ -33,7 +32,8 @@ def sections_before_basis(result: SizeResult) -> Iterator[Section]:
         yield Section("noses", "Nose curves", tuple(_nose_blocks(result, labels)))
     if result.voltages:
         yield Section("voltages", "Voltage conditions", tuple(voltage_blocks(result)))
-    yield Section("proof", "Why nothing cheaper works", tuple(proof_blocks(result)))
+    heading = "Why nothing cheaper works" if result.status == "optimal" else "What was proved"
+    yield Section("proof", heading, tuple(proof_blocks(result)))
     if result.plan is not None or result.verification is not None:
         yield Section("verification", "Verification", tuple(verification_blocks(result)))
     if result.runners_up:
@@ -105,7 +105,7 @@ def _cost_table(result: SizeResult, plan: Plan) -> Table:
 def _margin_blocks(result: SizeResult, labels: tuple[str, str]) -> Iterator[Block]:
     pairs = pair_up(result.cases_before, result.cases_after)
     if result.plan is None and result.cases_after:
-        yield Paragraph(("The best reachable margins are those of the largest plan the candidates allow.",))
+        yield Paragraph(("No plan meets everything; “best reachable” shows how far the candidates go.",))
     yield bars_of(pairs, labels)
     yield margins_table("margins", ("Noses and margins by case",), pairs, labels, result.basis)
     if result.plan is not None and result.plan.rows:
@@ -121,10 +121,7 @@ def _margin_blocks(result: SizeResult, labels: tuple[str, str]) -> Iterator[Bloc
 
 def _nose_blocks(result: SizeResult, labels: tuple[str, str]) -> Iterator[Block]:
     worst = [pair.last.case for pair in worst_first(pair_up(result.cases_before, result.cases_after))]
-    tight = binding(result.cases_after)
-    missed = [case.case for case in result.cases_after if not case.met]
-    prefer = [name for name in worst if name in missed or name in tight] + worst
-    charts = curves_of(result.curves, prefer, (labels[0] or "Without the plan", labels[1] or "With the plan"))
+    charts = curves_of(result.curves, worst, (labels[0] or "Without the plan", labels[1] or "With the plan"))
     if charts is not None:
         yield charts
     for key, label, cases in (("after", labels[1], result.cases_after), ("before", labels[0], result.cases_before)):

@@ -1,7 +1,8 @@
 """Invented results of every status, as the report gets them: names and figures are made up.
 
 The nose curves are those of two buses: a source of 1 pu behind a reactance X feeding a load of power
-factor 0.95 lagging with a shunt susceptance B, in closed form (a quadratic in the squared voltage).
+factor 0.95 lagging with a shunt susceptance B, in closed form (a quadratic in the squared voltage), on a
+base of 300 MVA; upper branch from 60 MW, nose, lower branch back to 60 MW.
 """
 
 from __future__ import annotations
@@ -31,7 +32,7 @@ TAN = math.tan(math.acos(0.95))
 NASTY = (
     "=1+1",
     "<script>document.title='owned'</script>",
-    '"quoted", and \'single\'',
+    "\"quoted\", and 'single'",
     "Zürich-Ångström-Łódź",
     "N" * 200,
     "محطة الشمال 3",
@@ -151,9 +152,11 @@ RUNNERS = (
 )
 
 
-def two_bus_curve(name: str, plan: str, x: float, b: float, required_mw: float | None = 12.0) -> NoseCurve:
-    """240 MW today on a base of 300 MVA; upper branch from 60 MW, nose, lower branch back to 60 MW."""
-    largest = math.cos(math.acos(0.95)) / (2 * x * (1 - b * x) * (1 + math.sin(math.acos(0.95))))
+def two_bus_curve(name: str, plan: str, bare_mw: float, nose_mw: float, required_mw: float | None = 12.0) -> NoseCurve:
+    """240 MW today; X is what turns at ``bare_mw`` without compensation, B what moves that to ``nose_mw``."""
+    largest = nose_mw / 300
+    x = 0.95 / (2 * (bare_mw / 300) * (1 + math.sin(math.acos(0.95))))
+    b = (1 - bare_mw / nose_mw) / x
     start = 0.2
     steps = [start + (largest - start) * (1 - (1 - i / 60) ** 2) for i in range(61)]
     upper = [_voltage(p, x, b, 1) for p in steps]
@@ -181,10 +184,10 @@ def _voltage(p: float, x: float, b: float, sign: int) -> float:
 
 
 CURVES = (
-    two_bus_curve("Oakmere-Tarnside", "before", 0.46, 0.0),
-    two_bus_curve("Oakmere-Tarnside", "after", 0.46, 0.32),
-    two_bus_curve("Fellhead-Oakmere 1", "before", 0.42, 0.0),
-    two_bus_curve("Fellhead-Oakmere 1", "after", 0.42, 0.32),
+    two_bus_curve("Oakmere-Tarnside", "before", 235.73888, 235.73888),
+    two_bus_curve("Oakmere-Tarnside", "after", 235.73888, 252.00384),
+    two_bus_curve("Fellhead-Oakmere 1", "before", 249.13077, 249.13077),
+    two_bus_curve("Fellhead-Oakmere 1", "after", 249.13077, 267.0041),
 )
 
 OPTIMAL = SizeResult(
@@ -295,16 +298,24 @@ def nasty_result() -> SizeResult:
     """A result in which every name is one that a careless renderer would spoil or run."""
     before = tuple(case(name, 1.0 + i) for i, name in enumerate(NASTY))
     after = tuple(
-        case(name, 12.5 + i, klass=name, weakest_bus=name, lowest_bus=name, limited_devices=(name, name), steps_off=name,
-             status=f"remark on {name}")
+        case(
+            name,
+            12.5 + i,
+            klass=name,
+            weakest_bus=name,
+            lowest_bus=name,
+            limited_devices=(name, name),
+            steps_off=name,
+            status=f"remark on {name}",
+        )
         for i, name in enumerate(NASTY)
-    )  # fmt: skip
+    )
     rows = tuple(PlanRow(name, name, "bank", 1, 10.0, 10.0, 100.0) for name in NASTY)
     plan = Plan(rows, tuple((name, 10.0) for name in NASTY))
     curves = tuple(
-        replace(two_bus_curve(name, state, 0.46, b), bus=name)
+        replace(two_bus_curve(name, state, 235.0, nose_mw), bus=name)
         for name in NASTY
-        for state, b in (("before", 0.0), ("after", 0.32))
+        for state, nose_mw in (("before", 235.0), ("after", 252.0))
     )
     return replace(
         OPTIMAL,

@@ -8,7 +8,7 @@
     if (cell.dataset.value !== undefined) return cell.dataset.value;
     if (cell.classList.contains("number")) return "";
     const copy = cell.cloneNode(true);
-    copy.querySelectorAll(".mark, .sign, .unit").forEach((extra) => extra.remove());
+    copy.querySelectorAll(".mark, .sign").forEach((extra) => extra.remove());
     return copy.textContent.replace(/[\t\r\n]+/g, " ").trim();
   };
 
@@ -40,10 +40,7 @@
 
   const asText = (table) => [...table.rows]
     .filter((row) => !row.classList.contains("groups"))
-    .map((row) => [...row.cells].map((cell) => {
-      const unit = row.parentElement.tagName === "THEAD" ? cell.querySelector(".unit") : null;
-      return unit ? `${held(cell)} [${unit.textContent}]` : held(cell);
-    }).join("\t"))
+    .map((row) => [...row.cells].map((cell) => cell.dataset.name ?? held(cell)).join("\t"))
     .join("\n");
 
   const put = async (text) => {
