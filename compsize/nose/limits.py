@@ -24,6 +24,14 @@ def support_step(case, i, s, above):  # type: ignore[no-untyped-def]
 
 
 @kernel
+def allowance(case, i, s):  # type: ignore[no-untyped-def]
+    """What counts as inside: 1e-9 pu of reactive power, and the voltage that moves as little of it."""
+    if case.hold[s] or case.tapof[i] >= 0:
+        return LIMIT_TOLERANCE
+    return max(LIMIT_TOLERANCE / max(case.stiff[i], 1.0), 1e-13)
+
+
+@kernel
 def excess(case, state, i):  # type: ignore[no-untyped-def]
     """How far node ``i`` is outside its segment (negative: inside), and the change of segment that cures it."""
     s = case.segptr[i] + state.seg[i]
@@ -50,14 +58,15 @@ def earliest(case, state, work, skip, lam0):  # type: ignore[no-untyped-def]
             continue
         s = case.segptr[i] + state.seg[i]
         z = floating(case, state, i)
+        slack = allowance(case, i, s)
         out = z - case.high[s]
-        if out > LIMIT_TOLERANCE:
+        if out > slack:
             before = max(work.sec[2 * i + 1], 0.0)
             frac = before / (before + out)
             if frac < best:
                 best, found, bound = frac, i, case.high[s]
         out = case.low[s] - z
-        if out > LIMIT_TOLERANCE:
+        if out > slack:
             before = max(work.sec[2 * i], 0.0)
             frac = before / (before + out)
             if frac < best:
@@ -66,12 +75,11 @@ def earliest(case, state, work, skip, lam0):  # type: ignore[no-untyped-def]
 
 
 @kernel
-def first_root(d0, d1, d2):  # type: ignore[no-untyped-def]
-    """Smallest s >= 0 with d0 + d1 s + d2 s^2 / 2 <= 0 (d0 >= 0 inside; a distance of zero leaving inwards returns later)."""
-    tiny = LIMIT_TOLERANCE
-    if d0 <= tiny:
-        if d1 < 0.0:
-            return 0.0
+def first_root(d0, d1, d2, tiny):  # type: ignore[no-untyped-def]
+    """Smallest s >= 0 with d0 + d1 s + d2 s^2 / 2 <= 0 (d0 > tiny inside; from the limit inwards it returns later)."""
+    if d0 <= 0.0 and d1 < 0.0:
+        return 0.0
+    if d0 <= tiny and d1 >= 0.0:
         return -2.0 * d1 / d2 if d2 < 0.0 else np.inf
     disc = d1 * d1 - 2.0 * d2 * d0
     if disc < 0.0:
@@ -104,9 +112,9 @@ def settle(pattern, case, state, factors, work, target, rounds):  # type: ignore
         for m in range(case.dev.size):
             i = case.dev[m]
             out, move = excess(case, state, i)
-            if out > LIMIT_TOLERANCE:
+            s = case.segptr[i] + state.seg[i]
+            if out > allowance(case, i, s):
                 count += 1
-                s = case.segptr[i] + state.seg[i]
                 weight = 1.0 if case.hold[s] and case.tapof[i] < 0 else 10.0
                 if turn < 2:
                     state.seg[i] += move

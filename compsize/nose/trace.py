@@ -14,7 +14,7 @@ from compsize.flow.equations import DEAD, TAP
 from compsize.flow.jit import kernel
 from compsize.flow.lu import solve
 from compsize.flow.second import live_weights, second_along
-from compsize.nose.limits import earliest, first_root, refactor, response, support_step
+from compsize.nose.limits import allowance, earliest, first_root, refactor, response, support_step
 from compsize.nose.newton import (
     ALPHA,
     CORNER,
@@ -34,7 +34,8 @@ from compsize.nose.newton import (
 )
 
 AT_FOLD, AT_LIMIT, NO_TURN, STUCK, UNSETTLED = 0, 1, 2, 3, 4
-EVENT_BREAK = -2
+NO_EVENT, PICKUP_BREAK = -1, -2
+NOTHING, EVENT, PLAIN, LAST = 0, 1, 2, 3
 
 
 @kernel
@@ -98,31 +99,76 @@ def trace(pattern, case, state, factors, work, top, cap, log):  # type: ignore[n
     real[ALPHA] = 0.0
     stride = 0.25 * cap
     sgn = 0.0
-    last = -1
-    idle = 0
-    fails = 0
-    pinned = False
+    lam0 = real[LAM]
+    last = device = old = old_pin = -1
+    old_alpha = s_try = 0.0
+    idle = fails = 0
+    pending = NOTHING
     note(state, work, log)
     for _ in range(20000):
-        lam0 = real[LAM]
         sign = refactor(pattern, case, state, factors, work)
         if sign == 0.0:
             return STUCK
-        if not pinned:
-            # A first tangent without a pin chooses it.
-            for i in range(2 * n):
-                work.d1[i] = -work.y_l[i]
-            choose_pin(case, state, work, work.d1, 0.02)
-            pinned = True
-            if whole[PIN] >= 0:
-                sign = refactor(pattern, case, state, factors, work)
-                if sign == 0.0:
-                    return STUCK
         if sgn == 0.0:
             sgn = sign
+        if pending == EVENT:
+            ratio = response(pattern, case, state, factors, work, device, old)
+            if (sign if ratio > 0.0 else -sign) != sgn:
+                # A fold lies before this event: back, and nearer to it, with the old segments.
+                state.seg[device] = old
+                restore(state, work, lam0)
+                whole[PIN] = old_pin
+                real[ALPHA] = old_alpha
+                stride = min(stride, s_try) * 0.3
+                pending = NOTHING
+                if stride < 1e-10:
+                    return STUCK
+                continue
+            note(state, work, log)
+            whole[EVENTS] += 1
+            if sign != sgn:
+                state.seg[device] = old
+                whole[CULPRIT] = device
+                whole[PIN] = -1
+                real[ALPHA] = 0.0
+                pending = LAST
+                continue
+            idle = idle + 1 if abs(real[LAM] - lam0) < 1e-12 else 0
+            if idle > 60:
+                return STUCK
+            last = device
+            stride = min(max(stride, 0.5 * s_try), cap)
+        elif pending == PLAIN:
+            if sign != sgn or real[LAM] < lam0:
+                # A fold was passed.
+                restore(state, work, lam0)
+                whole[PIN] = old_pin
+                real[ALPHA] = old_alpha
+                stride = min(stride, s_try) * 0.3
+                pending = NOTHING
+                if stride < 1e-10:
+                    return STUCK
+                continue
+            note(state, work, log)
+            last = -1
+            if real[LAM] >= top:
+                return NO_TURN
+            off = 0.0
+            for i in range(n):
+                moved = s_try * (work.d1[2 * i + 1] + 0.5 * s_try * work.d2[2 * i + 1])
+                off = max(off, abs(state.v[i] - work.v0[i] - moved))
+            stride = min(cap, stride * (0.7 if off > 2e-3 else 1.1 if off > 4e-4 else 1.6))
+        elif pending == LAST:
+            for i in range(2 * n):
+                work.d1[i] = -work.y_l[i]
+            return AT_LIMIT
+        pending = NOTHING
+        lam0 = real[LAM]
         pin, alpha = whole[PIN], real[ALPHA]
         k = 2 * pin + 1
         # Tangent with growing loading.
+        way = 1.0
+        dlam = 1.0
         if pin >= 0:
             slope = (alpha * work.y_e[k] - 1.0) / work.y_l[k]
             way = 1.0 if slope > 0.0 else -1.0
@@ -130,8 +176,6 @@ def trace(pattern, case, state, factors, work, top, cap, log):  # type: ignore[n
             for i in range(2 * n):
                 work.d1[i] = alpha * way * work.y_e[i] - dlam * work.y_l[i]
         else:
-            way = 1.0
-            dlam = 1.0
             for i in range(2 * n):
                 work.d1[i] = -work.y_l[i]
         second_along(pattern, case, state, lam0, work.d1, dlam, work.sec)
@@ -146,7 +190,7 @@ def trace(pattern, case, state, factors, work, top, cap, log):  # type: ignore[n
                 work.d2[i] -= d2lam * work.y_l[i]
         # The next event.
         ahead = np.inf
-        event = -1
+        event = NO_EVENT
         bound = 0.0
         for m in range(case.dev.size):
             i = case.dev[m]
@@ -157,60 +201,57 @@ def trace(pattern, case, state, factors, work, top, cap, log):  # type: ignore[n
             if case.hold[s] == 1 and case.tapof[i] < 0:
                 z2 += work.sec[2 * i + 1]
             low, high = z - case.low[s], case.high[s] - z
-            root = first_root(low, z1, z2)
+            work.sec[2 * i] = low
+            work.sec[2 * i + 1] = high
+            tiny = allowance(case, i, s)
+            root = first_root(low, z1, z2, tiny)
             if root < ahead:
                 ahead, event, bound = root, i, case.low[s]
-            root = first_root(high, -z1, -z2)
+            root = first_root(high, -z1, -z2, tiny)
             if root < ahead:
                 ahead, event, bound = root, i, case.high[s]
-        for m in range(case.dev.size):
-            i = case.dev[m]
-            s = case.segptr[i] + state.seg[i]
-            z = floating(case, state, i)
-            work.sec[2 * i] = z - case.low[s]
-            work.sec[2 * i + 1] = case.high[s] - z
         room = case.gbreak[whole[PIECE] + 1] - lam0
-        root = first_root(room, -dlam, -d2lam)
+        root = first_root(room, -dlam, -d2lam, 1e-13)
         if room < 1e-13:
             root = 0.0
         if root < ahead:
-            ahead, event = root, EVENT_BREAK
+            ahead, event = root, PICKUP_BREAK
         turn = -dlam / d2lam if d2lam < 0.0 else np.inf
         limit = stride if pin >= 0 else stride * 4.0
-        # One attempt: event, fold, or a plain step.
+        # One attempt: an event, the fold, or a plain step.
         if ahead <= min(limit, turn):
-            s_try, mode = ahead, CORNER if event != EVENT_BREAK else LOADING
-        elif turn <= 1.5 * limit:
+            s_try, mode = ahead, CORNER if event != PICKUP_BREAK else LOADING
+        elif turn <= 1.5 * limit and pin >= 0:
             s_try, mode = turn, FOLD
         else:
             s_try, mode = limit, MAGNITUDE if pin >= 0 else LOADING
-            event = -1
+            event = NO_EVENT
         save(state, work)
         target = bound
         if mode == MAGNITUDE:
             target = state.v[pin] + way * s_try
         elif mode == LOADING:
-            target = lam0 + s_try if event == -1 else case.gbreak[whole[PIECE] + 1]
-        for i in range(n):
-            state.th[i] += s_try * (work.d1[2 * i] + 0.5 * s_try * work.d2[2 * i])
-            state.v[i] += s_try * (work.d1[2 * i + 1] + 0.5 * s_try * work.d2[2 * i + 1])
-        real[LAM] = lam0 + s_try * (dlam + 0.5 * s_try * d2lam)
-        start = real[LAM]
-        ok = False
+            target = lam0 + s_try if event == NO_EVENT else case.gbreak[whole[PIECE] + 1]
         device = event
-        for _ in range(30):
-            if mode == FOLD and pin < 0:
-                break
+        # Already at its limit and leaving: it switches where it stands.
+        ok = mode == CORNER and ahead == 0.0
+        if not ok:
+            for i in range(n):
+                state.th[i] += s_try * (work.d1[2 * i] + 0.5 * s_try * work.d2[2 * i])
+                state.v[i] += s_try * (work.d1[2 * i + 1] + 0.5 * s_try * work.d2[2 * i + 1])
+            real[LAM] = lam0 + s_try * (dlam + 0.5 * s_try * d2lam)
+        start = real[LAM]
+        for _ in range(0 if ok else 30):
             if newton(pattern, case, state, factors, work, mode, device, target, mode != FOLD, 12, False) != 0:
                 break
-            if real[LAM] > start + 0.5 * abs(start - lam0) + 0.02 or real[LAM] < lam0 - max(1e-7, 0.5 * abs(start - lam0)):
-                if mode != MAGNITUDE:
-                    break
+            reach = 0.5 * abs(start - lam0)
+            if mode != MAGNITUDE and (real[LAM] > start + reach + 0.02 or real[LAM] < lam0 - max(1e-7, reach)):
+                break
             found, frac, where = earliest(case, state, work, device if mode == CORNER else -1, lam0)
             if found < 0:
                 ok = True
                 break
-            if found == last and work.sec[2 * found] < 1e-7 and work.sec[2 * found + 1] < 1e-7:
+            if found == last and min(work.sec[2 * found], work.sec[2 * found + 1]) < 1e-7:
                 break
             if mode == CORNER and device == found:
                 break
@@ -219,117 +260,39 @@ def trace(pattern, case, state, factors, work, top, cap, log):  # type: ignore[n
                 state.v[i] = work.v0[i] + frac * (state.v[i] - work.v0[i])
             real[LAM] = lam0 + frac * (real[LAM] - lam0)
             mode, device, target = CORNER, found, where
+        if ok and mode == FOLD:
+            # Only a maximum of the loading, passed upwards, is the nose.
+            curve = down = 0.0
+            for i in range(2 * n):
+                work.d1[i] = work.y_e[i] / work.y_e[k]
+                curve += work.grad[i] * work.d1[i]
+                down += work.w[i] * work.load[i]
+            if down != 0.0 and curve / down > 0.0 and real[LAM] >= lam0 - 1e-9:
+                real[CURVE] = -curve / down
+                note(state, work, log)
+                return AT_FOLD
+            ok = False
         if not ok:
             restore(state, work, lam0)
-            if mode == CORNER and ahead == 0.0 and fails > 2:
-                # Already at its limit and leaving, to rounding: it switches where it stands.
-                device, target, ok = event, bound, True
-        if not ok:
             fails += 1
             stride = min(stride, s_try) * 0.3
             if fails > 40 or stride < 1e-10:
                 return STUCK
             continue
         fails = 0
-        if mode == FOLD:
-            # A maximum of the loading, passed upwards.
-            curve = 0.0
-            for i in range(2 * n):
-                work.d1[i] = work.y_e[i] / work.y_e[k]
-            for i in range(2 * n):
-                curve += work.grad[i] * work.d1[i]
-            down = 0.0
-            for i in range(2 * n):
-                down += work.w[i] * work.load[i]
-            real[CURVE] = -curve / down if down != 0.0 else 0.0
-            if down != 0.0 and curve / down > 0.0 and real[LAM] >= lam0 - 1e-9:
-                note(state, work, log)
-                return AT_FOLD
-            restore(state, work, lam0)
-            stride = min(stride, s_try) * 0.3
-            fails = 1
-            continue
+        old_pin, old_alpha = pin, alpha
         if mode == CORNER:
             s = case.segptr[device] + state.seg[device]
-            move = support_step(case, device, s, target == case.high[s])
             old = state.seg[device]
-            state.seg[device] += move
+            state.seg[device] += support_step(case, device, s, target == case.high[s])
+            pending = EVENT
             if pin < 0 or pin == device:
                 choose_pin(case, state, work, work.d1, 1e-9)
-            sign = refactor(pattern, case, state, factors, work)
-            if sign == 0.0:
-                return STUCK
-            ratio = response(pattern, case, state, factors, work, device, old)
-            before = sign if ratio > 0.0 else -sign
-            if before != sgn:
-                # The fold lies before this event: go there with the old segments.
-                state.seg[device] = old
-                restore(state, work, lam0)
-                whole[PIN] = pin
-                real[ALPHA] = alpha
-                stride = min(stride, s_try) * 0.3
-                fails += 1
-                if stride < 1e-10:
-                    return STUCK
-                continue
-            note(state, work, log)
-            whole[EVENTS] += 1
-            if sign != sgn:
-                state.seg[device] = old
-                whole[CULPRIT] = device
-                whole[PIN] = -1
-                real[ALPHA] = 0.0
-                if refactor(pattern, case, state, factors, work) == 0.0:
-                    return STUCK
-                for i in range(2 * n):
-                    work.d1[i] = -work.y_l[i]
-                return AT_LIMIT
-            if abs(real[LAM] - lam0) < 1e-12:
-                idle += 1
-                if idle > 60:
-                    whole[CULPRIT] = device
-                    return STUCK
-            else:
-                idle = 0
-            last = device
-            stride = min(max(stride, 0.5 * s_try), cap)
-            pinned = True
-            continue
-        if event == EVENT_BREAK and mode == LOADING:
+        elif event == PICKUP_BREAK:
             if whole[PIECE] + 2 >= case.gbreak.size:
                 return NO_TURN
             whole[PIECE] += 1
-            continue
-        # A plain step: was a fold passed?
-        sign = refactor(pattern, case, state, factors, work)
-        if sign == 0.0 or sign != sgn or real[LAM] < lam0:
-            restore(state, work, lam0)
-            stride = min(stride, s_try) * 0.3
-            fails += 1
-            if stride < 1e-10:
-                return STUCK
-            continue
-        note(state, work, log)
-        last = -1
-        if real[LAM] >= top:
-            return NO_TURN
-        off = 0.0
-        for i in range(n):
-            off = max(off, abs(state.v[i] - work.v0[i] - s_try * (work.d1[2 * i + 1] + 0.5 * s_try * work.d2[2 * i + 1])))
-        grow = 1.6
-        if off > 2e-3:
-            grow = 0.7
-        elif off > 4e-4:
-            grow = 1.1
-        stride = min(cap, stride * grow)
-        # Re-pin when another magnitude has become much faster.
-        fastest = 1.0
-        for i in range(n):
-            s = state.seg[i]
-            if not case.role[i] & (DEAD | TAP) and not (s >= 0 and case.hold[case.segptr[i] + s] == 1):
-                fastest = max(fastest, abs(work.d1[2 * i + 1]))
-        if pin < 0 or fastest > 2.0:
-            pinned = False
-            whole[PIN] = -1
-            real[ALPHA] = 0.0
+        else:
+            pending = PLAIN
+            choose_pin(case, state, work, work.d1, 0.02 * dlam)
     return STUCK
