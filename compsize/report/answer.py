@@ -56,13 +56,15 @@ def answer_of(result: SizeResult) -> tuple[Tone, str, Words]:
     failed = result.verification is not None and not result.verification.passed
     if failed or missed or result.status in ("unreachable", "limit"):
         status = "The plan failed its verification" if failed else "The plan does not meet every requirement"
-        start = "Do not build it as it stands" if failed else "The plan falls short"
-        return "bad", status, (f"{start}: ", *worst, ".") if worst else (f"{start}.",)
+        if failed and result.verification is not None:
+            worst = (Quote(result.verification.sentence), *((" ", *worst, ".") if worst else ()))
+            return "bad", status, ("Do not build it as it stands: ", *worst)
+        return "bad", status, ("The plan falls short: ", *worst, ".") if worst else ("The plan falls short.",)
     if not plan.rows:
         every = "Every case already keeps" if len(cases) != 1 else "The case already keeps"
         return "good", "Nothing to build", (
-            f"{every} its required margin, and every voltage condition is met, without new equipment. "
-            "The least-cost plan is to build nothing.",
+            f"{every} its required margin without new equipment, so the least-cost plan is to build nothing."
+            f"{_voltages(result)}",
         )  # fmt: skip
     steps = sum(row.steps for row in plan.rows)
     mvar = shown(sum(row.total_mvar for row in plan.rows), mvar_decimals(plan))
@@ -73,18 +75,28 @@ def answer_of(result: SizeResult) -> tuple[Tone, str, Words]:
         ": every case keeps" if len(cases) != 1 else ": the case keeps",
     )
     if result.status == "optimal":
-        return "good", STATUSES["optimal"], (*build, " its required margin, and no cheaper plan does that.")
+        sure = f" its required margin, and no cheaper plan does that{_assuming(result)}.{_voltages(result)}"
+        return "good", STATUSES["optimal"], (*build, sure)
     bound = shown_bound(result.cost_bound, result.cost, cost_decimals(result))
     rest = "a cheaper plan may exist."
     if bound and result.gap_pct is not None:
         gap = shown_gap(result.gap_pct)
         rest = f"a cheaper plan may exist, but none below {bound} (gap {gap} %){_assuming(result)}."
-    return "warn", STATUSES["feasible"], (*build, f" its required margin; {rest}")
+    return "warn", STATUSES["feasible"], (*build, f" its required margin; {rest}{_voltages(result)}")
+
+
+def _voltages(result: SizeResult) -> str:
+    """A sentence on the voltage conditions that are not met, such as those that also fail without the plan."""
+    failing = sum(not check.met for check in result.voltages)
+    if not failing:
+        return ""
+    return f" {amount(failing, 'voltage condition is', 'voltage conditions are')} not met and listed below."
 
 
 def _assuming(result: SizeResult) -> str:
-    """A bound is called what it is: one that rests on sampled monotonicity says so."""
-    return " on the assumption named with the proof" if result.proof.kind in ("covers", "mixed") else ""
+    """A bound is called what it is: one that rests on an assumption, tested on samples, says so."""
+    tested = any(part.tests for part in result.proof.parts)
+    return " on the assumption named with the proof" if result.proof.kind == "covers" or tested else ""
 
 
 def _with_currency(result: SizeResult, text: str) -> str:

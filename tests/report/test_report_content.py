@@ -23,7 +23,7 @@ from sample_results import (
     nasty_result,
 )
 
-from compsize.plan.records import Plan, PlanRow, Proof, SizeResult, VoltageCheck
+from compsize.plan.records import Plan, PlanRow, Proof, ProofPart, SizeResult, VoltageCheck
 from compsize.report.blocks import Bars, CurveCharts, Figures, Ident, Items, Notice, Page, Quote, Table, plain
 from compsize.report.content import page_of
 from compsize.report.words import CAUTIONS
@@ -57,8 +57,8 @@ def column(block: Table, key: str, group: str = "") -> list[str]:
          "Build 4 steps (65 Mvar) at 2 sites for EUR\N{NO-BREAK SPACE}4,430,000: every case keeps its required margin; "
          "a cheaper plan may exist, but none below 4,150,000 (gap 6.33 %) on the assumption named with the proof."),
         (NOTHING, "good", "Nothing to build",
-         "Every case already keeps its required margin, and every voltage condition is met, without new equipment. "
-         "The least-cost plan is to build nothing."),
+         "Every case already keeps its required margin without new equipment, so the least-cost plan is to build "
+         "nothing."),
         (UNREACHABLE, "bad", "The requirement cannot be met",
          "No plan from the candidates, within the limits given, meets every requirement. With the best that can be "
          "reached, 2 of 6 cases miss the required margin; the furthest from it, Tarnside transformer T1, "
@@ -66,7 +66,8 @@ def column(block: Table, key: str, group: str = "") -> list[str]:
         (LIMIT, "warn", "Stopped before a plan was found",
          "The search stopped before it found a plan that meets every requirement. No plan can cost less than "
          "EUR\N{NO-BREAK SPACE}1,730,000. Whether there is one remains open."),
-        (FAILED_VERIFICATION, "bad", "The plan failed its verification", "Do not build it as it stands."),
+        (FAILED_VERIFICATION, "bad", "The plan failed its verification",
+         "Do not build it as it stands: The second code disagrees with the search."),
     ],
     ids=list(SIZES),
 )  # fmt: skip
@@ -85,6 +86,21 @@ def test_plan_that_misses_is_never_praised() -> None:
             "The plan falls short: 1 of 4 cases misses the required margin; the furthest from it, Oakmere-Tarnside, "
             "has 11.99 MW where 12.00 MW are required."
         )
+
+
+def test_voltage_misses_are_in_the_answer() -> None:
+    """A voltage condition that is not met, though the plan is accepted, is told in the first lines."""
+    checks = (VoltageCheck("intact_min_pu", "intact", "A", 0.94, 0.95, "pu", False, "also without the plan"),)
+    for result in (OPTIMAL, FEASIBLE, NOTHING):
+        answer = plain(page_of(replace(result, voltages=checks)).answer)
+        assert answer.endswith(". 1 voltage condition is not met and listed below.")
+
+
+def test_bound_on_a_sampled_assumption_says_so() -> None:
+    """A bound that rests on covers carries that with it; one from complete enumeration does not."""
+    covers = replace(OPTIMAL, proof=Proof("covers", "", 3, (ProofPart("covers", 3, "monotone", 10, 0),)))
+    assert plain(page_of(covers).answer).endswith("no cheaper plan does that on the assumption named with the proof.")
+    assert "assumption" not in plain(page_of(replace(OPTIMAL, proof=Proof("full", ""))).answer)
 
 
 def test_margins_answer() -> None:
