@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 from compsize.study.columns import Columns, References, read_columns
 from compsize.study.files import Faults
@@ -12,7 +12,7 @@ from compsize.study.schema import Table
 from compsize.study.schema_tables import NETWORK_TABLES
 from compsize.study.tables import RawTable
 
-__all__ = ["NetworkDraft", "build_network", "draft_from_raw", "empty_columns"]
+__all__ = ["MadeTables", "NetworkDraft", "build_network", "draft_from_raw", "empty_columns"]
 
 
 @dataclass(frozen=True)
@@ -114,6 +114,33 @@ def build_network(
         status=svc.flags["status"],
     )
     return NetworkTables(base_mva, frequency_hz, title, source, buses, loads, branches, generators, shunts, svcs)
+
+
+@dataclass
+class MadeTables:
+    """Rows of tables made from another format, with the numbers of the lines they come from (None: no lines)."""
+
+    file: str
+    rows: dict[str, list[dict[str, str]]] = field(default_factory=dict)
+    numbers: dict[str, list[int]] = field(default_factory=dict)
+
+    def add(self, table: str, row: int | None, **cells: float | str) -> None:
+        """Adds a row; numbers keep every digit."""
+        texts = {name: cell if isinstance(cell, str) else repr(float(cell)) for name, cell in cells.items()}
+        self.rows.setdefault(table, []).append(texts)
+        if row is not None:
+            self.numbers.setdefault(table, []).append(row)
+
+    def raw(self) -> dict[str, RawTable]:
+        """The tables as rows of text, blank where a row lacks a column."""
+        tables: dict[str, RawTable] = {}
+        for table, rows in self.rows.items():
+            header = tuple(dict.fromkeys(name for row in rows for name in row))
+            cells = tuple(tuple(row.get(name, "") for name in header) for row in rows)
+            tables[table] = RawTable(
+                self.file, header, cells, tuple(self.numbers[table]) if table in self.numbers else None
+            )
+        return tables
 
 
 def draft_from_raw(

@@ -20,15 +20,14 @@ from __future__ import annotations
 
 import os
 from collections.abc import Iterator
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 from pathlib import Path
 
-from compsize.study.build_network import NetworkDraft, draft_from_raw
+from compsize.study.build_network import MadeTables, NetworkDraft, draft_from_raw
 from compsize.study.check_network import check_network
 from compsize.study.columns import as_number
 from compsize.study.files import Faults, FileReader
 from compsize.study.records import NetworkTables
-from compsize.study.tables import RawTable
 
 __all__ = ["draft_cdf", "read_cdf"]
 
@@ -112,7 +111,7 @@ def draft_cdf(path: Path, name: str, reader: FileReader) -> NetworkDraft | None:
         base = 100.0
     buses = list(_cards(cards["BUS"], _BUS_ITEMS, 17, name, reader.faults))
     branches = list(_cards(cards["BRANCH"], _BRANCH_ITEMS, 0, name, reader.faults))
-    made = _Made(name)
+    made = MadeTables(name)
     _add_buses(made, buses, base, reader.faults)
     _add_branches(made, branches, {card.whole("bus number"): card for card in buses}, reader.faults)
     title = lines[0][45:73].strip()
@@ -183,31 +182,7 @@ def _cards(
         yield _Card(row, values)
 
 
-@dataclass
-class _Made:
-    """Rows of the tables as they are made, with the numbers of the lines they come from."""
-
-    file: str
-    rows: dict[str, list[dict[str, str]]] = field(default_factory=dict)
-    numbers: dict[str, list[int]] = field(default_factory=dict)
-
-    def add(self, table: str, row: int, **cells: float | str) -> None:
-        """Adds a row; numbers keep every digit."""
-        texts = {name: cell if isinstance(cell, str) else repr(float(cell)) for name, cell in cells.items()}
-        self.rows.setdefault(table, []).append(texts)
-        self.numbers.setdefault(table, []).append(row)
-
-    def raw(self) -> dict[str, RawTable]:
-        """The tables as rows of text, blank where a row lacks a column."""
-        tables: dict[str, RawTable] = {}
-        for table, rows in self.rows.items():
-            header = tuple(dict.fromkeys(name for row in rows for name in row))
-            cells = tuple(tuple(row.get(name, "") for name in header) for row in rows)
-            tables[table] = RawTable(self.file, header, cells, tuple(self.numbers[table]))
-        return tables
-
-
-def _add_buses(made: _Made, cards: list[_Card], base: float, faults: Faults) -> None:
+def _add_buses(made: MadeTables, cards: list[_Card], base: float, faults: Faults) -> None:
     swings = 0
     for card in cards:
         bus = card.whole("bus number")
@@ -232,7 +207,7 @@ def _add_buses(made: _Made, cards: list[_Card], base: float, faults: Faults) -> 
         faults.add(made.file, message, "Give exactly one bus the type 3.", column="slack")
 
 
-def _add_unit(made: _Made, card: _Card, bus: str, faults: Faults) -> None:
+def _add_unit(made: MadeTables, card: _Card, bus: str, faults: Faults) -> None:
     kind = card["type"]
     generates = card["generation MW"] != 0 or card["generation Mvar"] != 0
     if kind in (2, 3):
@@ -254,7 +229,7 @@ def _add_unit(made: _Made, card: _Card, bus: str, faults: Faults) -> None:
     made.add("generators", card.row, generator=bus, bus=bus, p_mw=p_mw, v_set_pu=v_set, slack=slack, **limits)
 
 
-def _add_branches(made: _Made, cards: list[_Card], buses: dict[str, _Card], faults: Faults) -> None:
+def _add_branches(made: MadeTables, cards: list[_Card], buses: dict[str, _Card], faults: Faults) -> None:
     used: set[str] = set()
     for card in cards:
         start, end = card.whole("tap bus"), card.whole("Z bus")

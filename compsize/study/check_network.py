@@ -32,7 +32,7 @@ def _at_rows(draft: NetworkDraft, table: str, faults: Faults) -> Callable[[Bools
 
     def report(wrong: Bools, column: str | None, message: str, remedy: str) -> None:
         for at in np.flatnonzero(wrong):
-            faults.add(columns.file, message, remedy, row=columns.row(int(at)), column=column)
+            faults.add(columns.place(int(at)), message, remedy, row=columns.row(int(at)), column=column)
 
     return report
 
@@ -77,16 +77,16 @@ def _check_tap_changers(draft: NetworkDraft, faults: Faults) -> None:
         "tap_max": branches.tap_max,
         "tap_steps": branches.tap_steps,
     }
-    faulty = {(fault.row, fault.column) for fault in faults if fault.file == columns.file}
+    faulty = {(fault.file, fault.row, fault.column) for fault in faults}
     for at, regulated in enumerate(branches.regulated_bus):
         row = columns.row(at)
         blank = [name for name, values in numbers.items() if np.isnan(values[at])]
         if not regulated:
             blank.insert(0, "regulated_bus")
-        missing = [name for name in blank if (row, name) not in faulty]
+        missing = [name for name in blank if (columns.place(at), row, name) not in faulty]
         if missing and len(blank) < 5:
             faults.add(
-                columns.file,
+                columns.place(at),
                 f"the tap changer lacks {', '.join(missing)}.",
                 "Give all of regulated_bus, v_target_pu, tap_min, tap_max and tap_steps, or none.",
                 row=row,
@@ -151,7 +151,7 @@ def _check_set_points(draft: NetworkDraft, faults: Faults) -> None:
         if bus in by_unit and by_unit[bus][1] != svcs.v_ref_pu[at] and not np.isnan(svcs.v_ref_pu[at]):
             unit, value = by_unit[bus]
             faults.add(
-                columns.file,
+                columns.place(at),
                 f"without slope, '{svcs.svc[at]}' holds {svcs.v_ref_pu[at]:g} pu at bus '{bus}', "
                 f"where generator '{unit}' holds {value:g} pu.",
                 "Give the device a slope or the same voltage.",
@@ -173,7 +173,7 @@ def _check_one_value(
         holder, earlier = first.setdefault(bus, (ids[at], value))
         if earlier != value:
             faults.add(
-                columns.file,
+                columns.place(at),
                 f"'{ids[at]}' holds bus '{bus}' at {value:g} pu, but '{holder}' holds it at {earlier:g} pu.",
                 "Give both the same value.",
                 row=columns.row(at),

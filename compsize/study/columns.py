@@ -42,10 +42,18 @@ class Columns:
     """Names of the columns that the file has."""
     ragged: frozenset[int] = frozenset()
     """Numbers of the rows of the wrong length."""
+    key: str = ""
+    """Name of the column that names the row."""
 
     def row(self, at: int) -> int | None:
         """Row number of the ``at``-th entry, counted from 0."""
         return None if self.rows is None else self.rows[at]
+
+    def place(self, at: int) -> str:
+        """The file and, where it has no rows, the name of the ``at``-th entry, to stand before a fault."""
+        if self.rows is not None or self.key not in self.texts:
+            return self.file
+        return f"{self.file}, {self.key} '{self.texts[self.key][at]}'"
 
 
 @dataclass
@@ -77,7 +85,9 @@ def as_yes_no(text: str) -> bool | None:
 
 def read_columns(raw: RawTable, table: Table, references: References, faults: Faults) -> Columns:
     """Types every declared column of ``raw``, with a fault for each cell and name that is wrong."""
-    done = Columns(raw.file, raw.numbers, len(raw.rows), given=frozenset(raw.header), ragged=raw.ragged)
+    done = Columns(
+        raw.file, raw.numbers, len(raw.rows), given=frozenset(raw.header), ragged=raw.ragged, key=table.key.name
+    )
     for name in raw.header:
         if name and name not in table.names:
             if table.open_ended:
@@ -131,8 +141,8 @@ class _Where:
     faults: Faults
 
     def fault(self, at: int, message: str, remedy: str) -> None:
-        if self.done.row(at) not in self.done.ragged:
-            self.faults.add(self.done.file, message, remedy, row=self.done.row(at), column=self.column.name)
+        if self.done.rows is None or self.done.row(at) not in self.done.ragged:
+            self.faults.add(self.done.place(at), message, remedy, row=self.done.row(at), column=self.column.name)
 
 
 def _indices(cells: Iterable[str], wanted: str) -> list[int]:

@@ -8,6 +8,8 @@ from dataclasses import dataclass
 from pathlib import Path
 
 from compsize.study.build_network import NetworkDraft, build_network, empty_columns
+from compsize.study.cdf import draft_cdf
+from compsize.study.cgmes import draft_cgmes
 from compsize.study.check_network import check_network
 from compsize.study.columns import Columns, References, read_columns
 from compsize.study.files import Faults, FileReader
@@ -24,7 +26,8 @@ __all__ = ["draft_network", "read_network"]
 def read_network(path: str | os.PathLike[str]) -> NetworkTables:
     """Reads and checks a network.
 
-    :param path: a folder of CSV tables, an .xlsx with the same sheets, or an IEEE CDF file.
+    :param path: a folder of CSV tables, an .xlsx with the same sheets, an IEEE CDF file, or a CGMES
+        folder or zip.
     :raises InputError: with every fault of the network at once.
     """
     place = Path(path)
@@ -44,6 +47,11 @@ def draft_network(path: Path, name: str, reader: FileReader) -> NetworkDraft | N
     faults = reader.faults
     prefix = f"{name}/" if name and not name.endswith("/") else name
     if path.is_dir():
+        if (
+            any(file.suffix.lower() in (".xml", ".zip") for file in path.iterdir())
+            and not (path / "buses.csv").exists()
+        ):
+            return draft_cgmes(path, prefix, reader)
         return _draft_tables(FolderSource(path, prefix, reader), faults)
     if not path.exists():
         remedy = "Name a folder of tables, an .xlsx, an IEEE CDF file, or a CGMES folder or zip."
@@ -53,12 +61,12 @@ def draft_network(path: Path, name: str, reader: FileReader) -> NetworkDraft | N
     if ending in (".xlsx", ".xlsm"):
         book = open_workbook(path, name, reader, {"network", *NETWORK_TABLES})
         return None if book is None else _draft_tables(book, faults)
-    if ending in (".zip", ".xls", ".ods", ".csv", ".toml", ".xml"):
+    if ending == ".zip":
+        return draft_cgmes(path, name, reader)
+    if ending in (".xls", ".ods", ".csv", ".toml", ".xml"):
         remedy = "Name a folder of tables, an .xlsx, an IEEE CDF file, or a CGMES folder or zip."
         faults.add(name, f"a network cannot be read from a {ending} file.", remedy)
         return None
-    from compsize.study.cdf import draft_cdf
-
     return draft_cdf(path, name, reader)
 
 

@@ -23,13 +23,14 @@ class RawTable:
     """Rows of trimmed text, all as long as the header; ``numbers`` are the rows' numbers in the file.
 
     ``ragged`` are the numbers of rows that were shorter or longer, for which a fault has been noted: they
-    are here, cut or filled with blanks, so that other rows may refer to them.
+    are here, cut or filled with blanks, so that other rows may refer to them. ``numbers`` is None for tables
+    made from a format without rows.
     """
 
     file: str
     header: tuple[str, ...]
     rows: tuple[tuple[str, ...], ...]
-    numbers: tuple[int, ...]
+    numbers: tuple[int, ...] | None
     ragged: frozenset[int] = frozenset()
 
     def column(self, name: str) -> tuple[str, ...] | None:

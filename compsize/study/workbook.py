@@ -54,7 +54,7 @@ class WorkbookSource:
             self.faults.add(label, "the columns are not 'key' and 'value'.", "Give exactly these two columns.", row=1)
             return label, None
         found: dict[str, object] = {}
-        for (key, value), row in zip(raw.rows, raw.numbers, strict=True):
+        for (key, value), row in zip(raw.rows, raw.numbers or (), strict=True):
             if key in found:
                 self.faults.add(label, f"the key '{key}' stands twice.", "Remove one of them.", row=row)
             if value:

@@ -34,16 +34,12 @@ def admittance(tables: NetworkTables) -> Complex:
 
 
 def solve(tables: NetworkTables, q_limits: bool = True) -> tuple[Complex, NDArray[np.float64]]:
-    """Voltages [pu] and net injected Mvar of generation by bus; constant-power loads only."""
+    """Voltages [pu] and Mvar of generation by bus."""
     index = {bus: at for at, bus in enumerate(tables.buses.bus)}
     size = len(index)
     y = admittance(tables)
     s = np.zeros(size, dtype=complex)
     loads, units = tables.loads, tables.generators
-    assert not loads.z_share_pct.any()
-    assert not loads.i_share_pct.any()
-    for at in np.flatnonzero(loads.status):
-        s[index[loads.bus[at]]] -= (loads.p_mw[at] + 1j * loads.q_mvar[at]) / tables.base_mva
     low, high, held = np.zeros(size), np.zeros(size), np.full(size, np.nan)
     slack = -1
     for at in np.flatnonzero(units.status):
@@ -55,15 +51,25 @@ def solve(tables: NetworkTables, q_limits: bool = True) -> tuple[Complex, NDArra
         slack = i if units.slack[at] else slack
     angle = np.radians(np.nan_to_num(tables.buses.angle_deg))
     size_v = np.where(np.isnan(held), np.nan_to_num(tables.buses.v_pu, nan=1.0), held)
-    fixed = np.zeros(size, dtype=bool)
-    extra = np.zeros(size)
-    for _ in range(20):
+    fixed = ~np.isnan(held) & (low == high)  # a unit of fixed Mvar holds no voltage
+    fixed[slack] = False
+    extra = np.where(fixed, low, 0.0)
+    for _ in range(100):
         pv = ~np.isnan(held) & ~fixed
         pv[slack] = True
         size_v = np.where(pv, held, size_v)
-        v = newton(y, s + 1j * extra, size_v * np.exp(1j * angle), slack, pv)
+        drawn = np.zeros(size, dtype=complex)
+        for at in np.flatnonzero(loads.status):
+            i = index[loads.bus[at]]
+            z, c = loads.z_share_pct[at] / 100, loads.i_share_pct[at] / 100
+            mix = z * size_v[i] ** 2 + c * size_v[i] + 1 - z - c
+            drawn[i] += mix * (loads.p_mw[at] + 1j * loads.q_mvar[at]) / tables.base_mva
+        v = newton(y, s - drawn + 1j * extra, size_v * np.exp(1j * angle), slack, pv)
+        change = np.abs(np.abs(v) - size_v).max()
         angle, size_v = np.angle(v), np.abs(v)
-        q = (v * np.conj(y @ v)).imag - s.imag
+        if change > 1e-9:
+            continue
+        q = (v * np.conj(y @ v)).imag + drawn.imag
         over = pv & ((q > high + 1e-9) | (q < low - 1e-9))
         over[slack] = False
         if not q_limits or not over.any():
@@ -81,7 +87,7 @@ def newton(y: Complex, s: Complex, v: Complex, slack: int, pv: NDArray[np.bool_]
         current = y @ v
         mismatch = v * np.conj(current) - s
         f = np.concatenate([mismatch.real[angles], mismatch.imag[sizes]])
-        if np.abs(f).max() < 1e-11:
+        if np.abs(f).max() < 1e-9:
             return v
         unit = v / np.abs(v)
         by_angle = 1j * np.diag(v) @ np.conj(np.diag(current) - y @ np.diag(v))
