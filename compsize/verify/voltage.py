@@ -122,7 +122,7 @@ class VoltageRules:
             if found is None:
                 continue
             check = self._worst("light_load_pct", "intact", found.v, factor)
-            check = replace(check, note=_join(check.note, f"with {describe(k)}"))
+            check = replace(check, note=_join(check.note, describe(k) if k else ""))
             if best is None or (check.met, best.value - best.limit) > (best.met, check.value - check.limit):
                 best = check
             if best.met:
@@ -221,37 +221,54 @@ def check_voltages(study: Study, cases: Cases, unplanned: Cases) -> tuple[Voltag
     if not study.voltage.given:
         return ()
     rules = VoltageRules(study, cases, unplanned)
-    best: list[VoltageCheck] | None = None
+    order = list(cases.names[1:])
+    fallback: dict[Row, int] | None = None
     for k in rules.states():
         checks, intact = rules.intact(k)
-        if intact is not None and all(c.met for c in checks):
-            checks += _with_state(rules, k, intact)
-        checks = [replace(c, note=_join(c.note, f"with {describe(k)}")) for c in checks] if k else checks
-        score = (len(checks) > 2, -sum(not c.met for c in checks))
-        if best is None or score > (len(best) > 2, -sum(not c.met for c in best)):
-            best = checks
-        if intact is not None and all(c.met for c in checks):
-            break
-    return (*(best or ()), *rules.light_load())
+        if intact is None or not all(c.met for c in checks):
+            continue
+        fallback = k if fallback is None else fallback
+        checks += _with_state(rules, k, intact, order, first=True)
+        if all(c.met for c in checks):
+            return (*_noted(checks, k), *rules.light_load())
+    k = next(rules.states()) if fallback is None else fallback
+    checks, intact = rules.intact(k)
+    if intact is not None:
+        checks += _with_state(rules, k, intact, order)
+    return (*_noted(checks, k), *rules.light_load())
 
 
-def _with_state(rules: VoltageRules, k: Steps, intact: Voltages) -> list[VoltageCheck]:
-    """The conditions on outages and on switching that state k has to meet besides the intact band."""
+def _noted(checks: list[VoltageCheck], k: Steps) -> list[VoltageCheck]:
+    return [replace(c, note=_join(c.note, describe(k))) for c in checks] if k else checks
+
+
+def _with_state(
+    rules: VoltageRules, k: Steps, intact: Voltages, order: list[str], first: bool = False
+) -> list[VoltageCheck]:
+    """The conditions on outages and on switching that state k has to meet besides the intact band.
+
+    Outages are taken in ``order``, and one that breaks a condition moves to its head; ``first``: stop at it.
+    """
     limits = rules.limits
     found: dict[str, list[VoltageCheck]] = {}
     solved: dict[str, Voltages] = {}
     after_outage = (limits.post_outage_min_pu, limits.post_outage_max_pu, limits.post_outage_change_max_pct)
     if any(value is not None for value in (*after_outage, limits.switching_step_outage_max_pct)):
-        for case in rules.cases.names[1:]:
+        for case in list(order):
             checks, point = rules.outage(case, k, intact)
             for check in checks:
                 found.setdefault(check.name, []).append(check)
             if point is not None:
                 solved[case] = point
+            if not all(check.met for check in checks):
+                order.remove(case)
+                order.insert(0, case)
+                if first:
+                    return checks
     result = []
     for checks in found.values():
         broken = [c for c in checks if not c.met]
-        result += broken or [max(checks, key=lambda c: -abs(c.value - c.limit))]
+        result += broken or [min(checks, key=lambda c: abs(c.value - c.limit))]
     if limits.switching_step_max_pct is not None:
         result += rules.switching("switching_step_max_pct", limits.switching_step_max_pct, "intact", k, intact)
     if limits.switching_step_outage_max_pct is not None:
@@ -291,5 +308,5 @@ def _unsolved(name: str, case: str) -> VoltageCheck:
 
 def describe(k: Steps) -> str:
     """A state of switched steps in words."""
-    words = [f"{steps} of {equipment} at {site}" for (site, equipment), steps in k.items()]
-    return ("switched steps on: " + ", ".join(words)) if words else "no switched steps"
+    words = [f"{steps} of {equipment} at {site}" for (site, equipment), steps in k.items() if steps]
+    return "switched steps on: " + (", ".join(words) or "none")
