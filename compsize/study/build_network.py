@@ -135,6 +135,8 @@ class MadeTables:
         """The tables as rows of text, blank where a row lacks a column."""
         tables: dict[str, RawTable] = {}
         for table, rows in self.rows.items():
+            if not rows:
+                continue
             header = tuple(dict.fromkeys(name for row in rows for name in row))
             cells = tuple(tuple(row.get(name, "") for name in header) for row in rows)
             tables[table] = RawTable(

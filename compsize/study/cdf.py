@@ -32,6 +32,7 @@ from compsize.study.records import NetworkTables
 __all__ = ["draft_cdf", "read_cdf"]
 
 FREQUENCY_HZ = 60.0
+MOST_TAP_STEPS = 1000
 
 # First and last column of each item, counted from 1, in the order of the card.
 _BUS_ITEMS = {
@@ -261,7 +262,12 @@ def _tap_changer(card: _Card, buses: dict[str, _Card]) -> dict[str, float | str]
     """The cells of a tap changer; empty where limits, step or controlled bus are not usable."""
     low, high, step, tap = card["minimum tap"], card["maximum tap"], card["step"], card["ratio"] or 1.0
     held = card.whole("control bus")
-    if held not in buses or not 0 < low < high or step <= 0 or not low - 1e-6 <= tap <= high + 1e-6:
+    if (
+        held not in buses
+        or not 0 < low < high
+        or step < (high - low) / MOST_TAP_STEPS
+        or not low - 1e-6 <= tap <= high + 1e-6
+    ):
         return {}
     least, most = card["minimum voltage"], card["maximum voltage"]
     target = (least + most) / 2 if 0 < least <= most else buses[held]["final voltage"]

@@ -18,7 +18,7 @@ import math
 from dataclasses import dataclass
 
 from compsize.study.cgmes_buses import Grid, Port
-from compsize.study.cgmes_model import Thing
+from compsize.study.cgmes_model import SMALLEST_KV, Thing
 from compsize.study.cgmes_taps import Changer, changers
 
 __all__ = ["add_branches"]
@@ -126,11 +126,13 @@ class _Winding:
 def _winding(grid: Grid, end: Thing, taps: dict[str, list[Changer]]) -> _Winding | None:
     number = grid.model.number
     terminal = grid.model.link(end, "Terminal")
+    if terminal is None:
+        grid.model.fault(end, "the winding has no terminal.", "Add the equipment file (EQ) that holds it.")
     port = None if terminal is None else grid.port(terminal)
     if port is None:
         return None
     rated = number(end, "ratedU")
-    if rated <= 0:
+    if rated < SMALLEST_KV:
         grid.model.fault(end, "the winding has no rated voltage.", "Add ratedU.")
         rated = port.kv
     found = taps.get(end.id, [])

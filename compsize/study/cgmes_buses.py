@@ -8,7 +8,7 @@ from collections.abc import Iterable
 from dataclasses import dataclass, field
 
 from compsize.study.build_network import MadeTables
-from compsize.study.cgmes_model import Model, Thing
+from compsize.study.cgmes_model import SMALLEST_KV, Model, Thing
 
 __all__ = ["Grid", "Port"]
 
@@ -50,6 +50,7 @@ class Grid:
             terminals.setdefault(terminal.text("ConductingEquipment"), []).append(terminal)
         for found in terminals.values():
             found.sort(key=lambda terminal: self.model.number(terminal, "sequenceNumber", 1.0))
+        self._check_complete(terminals)
         self._join(terminals)
         for equipment, found in terminals.items():
             ports = [port for port in map(self.port, found) if port is not None]
@@ -60,6 +61,22 @@ class Grid:
             size = self.model.number(state, "v", math.nan)
             if bus is not None and size > 0:
                 self.start.setdefault(bus, (size / self._kv[bus], self.model.number(state, "angle")))
+
+    def _check_complete(self, terminals: dict[str, list[Thing]]) -> None:
+        """A terminal that refers to nothing shows that a file of the set is missing."""
+        things = self.model.things
+        homeless = sum(len(found) for name, found in terminals.items() if name not in things)
+        if homeless:
+            remedy = "Add the equipment file (EQ) of every model, and the boundary's."
+            message = f"{homeless} terminals belong to equipment that is not in the set."
+            self.model.faults.add(self.model.label, message, remedy)
+        for equipment, found in terminals.items():
+            for terminal in found:
+                lost = terminal.text("TopologicalNode") and terminal.text("TopologicalNode") not in things
+                loose = self.model.flag(terminal, "connected", False) and self._node(terminal) is None
+                if equipment in things and (lost or loose):
+                    remedy = "Add the topology file (TP) of every model, and the boundary's."
+                    self.model.fault(things[equipment], "a terminal is connected to no topological node.", remedy)
 
     def _node(self, terminal: Thing) -> Thing | None:
         node = self.model.link(terminal, "TopologicalNode")
@@ -107,7 +124,7 @@ class Grid:
         if base is None:
             base = self.model.link(self.model.link(node, "ConnectivityNodeContainer"), "BaseVoltage")
         kv = 0.0 if base is None else self.model.number(base, "nominalVoltage")
-        if kv <= 0:
+        if kv < SMALLEST_KV:
             self.model.fault(node, "there is no base voltage.", "Add the boundary's equipment file or BaseVoltage.")
             return 1.0
         return kv

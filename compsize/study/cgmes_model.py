@@ -10,6 +10,7 @@ from __future__ import annotations
 
 import io
 import zipfile
+import zlib
 from collections.abc import Iterator
 from dataclasses import dataclass, field
 from pathlib import Path
@@ -23,6 +24,10 @@ __all__ = ["Model", "Thing", "read_model"]
 _RDF = "{http://www.w3.org/1999/02/22-rdf-syntax-ns#}"
 _CIM = "{http://iec.ch/TC57/2013/CIM-schema-cim16#}"
 _MOST_BYTES = 2**31
+LARGEST = 1e12
+"""Largest number, of any unit, that an attribute may have."""
+SMALLEST_KV = 1e-3
+"""Lowest rated or nominal voltage [kV]."""
 
 
 @dataclass
@@ -69,6 +74,9 @@ class Model:
         value = as_number(text)
         if value is None:
             self.fault(thing, f"{key} is '{text}', which is not a number.", "Correct the file.")
+            return default
+        if abs(value) > LARGEST:
+            self.fault(thing, f"{key} is {text}, which is too large to be meant.", "Correct the file.")
             return default
         return value
 
@@ -141,7 +149,7 @@ def _unzip(content: bytes, label: str, reader: FileReader, depth: int) -> Iterat
                     yield f"{label}, {info.filename}", bundle.read(info)
                 elif inside.endswith(".zip") and depth < 2:
                     yield from _unzip(bundle.read(info), f"{label}, {info.filename}", reader, depth + 1)
-    except (zipfile.BadZipFile, NotImplementedError, RuntimeError, OSError, EOFError, ValueError) as why:
+    except (zipfile.BadZipFile, zlib.error, NotImplementedError, RuntimeError, OSError, EOFError, ValueError) as why:
         reader.faults.add(label, f"the zip cannot be read ({type(why).__name__}).", "Pack the XML files again.")
 
 

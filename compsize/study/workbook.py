@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import io
 import warnings
-import zipfile
 from dataclasses import dataclass
 from datetime import date, datetime, time, timedelta
 from pathlib import Path
@@ -68,36 +67,60 @@ def open_workbook(path: Path, name: str, reader: FileReader, wanted: set[str]) -
     if content is None:
         return None
     try:
-        book = _load(content, values=False)
-        formulas = False
-        sheets: dict[str, list[list[str]]] = {}
-        notes: list[tuple[str, int, int, str]] = []
-        for title in book.sheetnames:
-            if title.strip() not in wanted:
-                sheets.setdefault(title.strip(), [])
-                continue
-            rows = []
-            for cells in book[title].iter_rows():
-                formulas = formulas or any(cell.data_type == "f" for cell in cells)
-                rows.append([cell.value for cell in cells])
-            sheets[title.strip()] = [[_text(value) for value in row] for row in rows]
-            notes += [
-                (title.strip(), at, to, problem)
-                for at, row in enumerate(rows)
-                for to, value in enumerate(row)
-                if (problem := _problem(value))
-            ]
-        if formulas:
-            _fill_formulas(_load(content, values=True), sheets, notes)
-    except (zipfile.BadZipFile, LookupError, ValueError, OSError, TypeError, AttributeError, SyntaxError) as why:
-        # A damaged workbook fails somewhere inside its own reader, with whatever error comes first.
+        found = _values(content, wanted)
+    except Exception as why:  # a damaged workbook fails somewhere inside its own reader, with whatever comes first
         reader.faults.add(name, f"the workbook cannot be read ({type(why).__name__}).", "Save it again as .xlsx.")
         return None
+    sheets: dict[str, list[list[str]]] = {}
+    notes: list[tuple[str, int, int, str]] = []
+    for title, rows in found.items():
+        sheets[title] = [[_text(value) for value in row] for row in rows]
+        notes += [
+            (title, at, to, problem)
+            for at, row in enumerate(rows)
+            for to, value in enumerate(row)
+            if (problem := _problem(value))
+        ]
     for sheet, at, to, problem in notes:
-        remedy = "Format the column as text and type the value again." if "date" in problem else "Correct the cell."
+        remedy = "Correct the cell."
+        if "date" in problem:
+            remedy = "Format the column as text and type the value again."
+        elif "formula" in problem:
+            remedy = "Open and save the workbook in a spreadsheet program, or write the value."
         head = sheets[sheet][0][to] if to < len(sheets[sheet][0]) else ""
         reader.faults.add(f"{name}, sheet {sheet}", problem, remedy, row=at + 1, column=head or None)
     return WorkbookSource(name, sheets, reader.faults)
+
+
+class _NoValue:
+    """Stands for a formula that the workbook stores no value of."""
+
+    def __str__(self) -> str:
+        return ""
+
+
+def _values(content: bytes, wanted: set[str]) -> dict[str, list[list[Any]]]:
+    """Cell values of the wanted sheets by title; other sheets are there without rows."""
+    book = _load(content, values=False)
+    stored: Workbook | None = None
+    found: dict[str, list[list[Any]]] = {}
+    for title in book.sheetnames:
+        if title.strip() not in wanted:
+            found.setdefault(title.strip(), [])
+            continue
+        rows: list[list[Any]] = []
+        formulas: list[tuple[int, int]] = []
+        for at, cells in enumerate(book[title].iter_rows()):
+            rows.append([cell.value for cell in cells])
+            formulas += [(at, to) for to, cell in enumerate(cells) if cell.data_type == "f"]
+        if formulas:
+            stored = stored or _load(content, values=True)
+            results = list(stored[title].iter_rows(values_only=True))
+            for at, to in formulas:
+                value = results[at][to]
+                rows[at][to] = _NoValue() if value is None else value
+        found[title.strip()] = rows
+    return found
 
 
 def _load(content: bytes, values: bool) -> Workbook:
@@ -107,21 +130,6 @@ def _load(content: bytes, values: bool) -> Workbook:
         # Styles and validations that are not understood do not touch the values.
         warnings.simplefilter("ignore")
         return load_workbook(io.BytesIO(content), read_only=True, data_only=values)
-
-
-def _fill_formulas(book: Workbook, sheets: dict[str, list[list[str]]], notes: list[tuple[str, int, int, str]]) -> None:
-    """Puts the stored values of formulas in their places."""
-    for title in book.sheetnames:
-        rows = sheets[title.strip()]
-        for at, cells in enumerate(book[title].iter_rows(values_only=True)):
-            if at >= len(rows):
-                break
-            for to, value in enumerate(cells):
-                if to < len(rows[at]) and rows[at][to].startswith("="):
-                    rows[at][to] = _text(value)
-                    problem = _problem(value) or ("the formula has no stored value." if value is None else "")
-                    if problem:
-                        notes.append((title.strip(), at, to, problem))
 
 
 def _text(value: Any) -> str:
@@ -135,6 +143,8 @@ def _text(value: Any) -> str:
 
 
 def _problem(value: Any) -> str:
+    if isinstance(value, _NoValue):
+        return "the formula has no stored value."
     if isinstance(value, datetime | date | time | timedelta):
         return "the cell holds a date or time."
     if isinstance(value, str) and value in _ERRORS:

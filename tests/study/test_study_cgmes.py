@@ -229,6 +229,8 @@ def test_phase_shifters(tmp_path: Path, changer: str, tap: float, shift: float) 
     [
         (("ACLineSegment.x=10", "ACLineSegment.x=ten"), "ACLineSegment 'Stub': x is 'ten', which is not a number."),
         (("SynchronousMachine.referencePriority=1", "SynchronousMachine.referencePriority=0"), "no machine in service"),
+        (("TransformerEnd.Terminal=#xt1b", "TransformerEnd.Terminal=#gone"), "'e2': the winding has no terminal. Add"),
+        (("EnergyConsumer d1", "Unknown d9"), "1 terminals belong to equipment that is not in the set. Add the"),
         (("PowerTransformerEnd.ratedU=115", "PowerTransformerEnd.ratedU=0"), "the winding has no rated voltage"),
         (("LinearShuntCompensator", "FrequencyConverter"), "equipment of this kind is not read. Leave it out"),
         (
@@ -253,7 +255,13 @@ def test_incomplete_and_foreign_files_are_refused(tmp_path: Path) -> None:
     (folder / "invented_TP.xml").rename(tmp_path / "TP.xml")
     with pytest.raises(InputError, match=r"none of the 2 XML files holds topology \(TP\)\. Give the EQ, SSH and TP"):
         read_network(folder)
-    (tmp_path / "TP.xml").rename(folder / "invented_TP.xml")
+    text = (tmp_path / "TP.xml").read_text()
+    (folder / "invented_TP.xml").write_text(text.replace('rdf:resource="#_nC"', 'rdf:resource="#_nX"'))
+    with pytest.raises(
+        InputError, match=r"EnergyConsumer 'Town': a terminal is connected to no topological node\. Add"
+    ):
+        read_network(folder)
+    (folder / "invented_TP.xml").write_text(text)
     (folder / "invented_SSH.xml").rename(tmp_path / "SSH.xml")
     with pytest.raises(InputError, match=r"no file holds the steady-state hypothesis \(SSH\)"):
         read_network(folder)
