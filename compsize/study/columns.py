@@ -18,8 +18,8 @@ __all__ = ["Columns", "References", "as_number", "as_yes_no", "read_columns"]
 _NUMBER = re.compile(r"[+-]?(\d+\.?\d*|\.\d+)([eE][+-]?\d+)?")
 _NUMBER_LETTERS = frozenset("0123456789.+-eE")
 _YES_NO = {"yes": True, "on": True, "true": True, "1": True, "no": False, "off": False, "false": False, "0": False}
-# Looking for the nearest of thousands of ids is slow; a file with more faults than this needs no more hints.
-_MOST_HINTS = 100
+# Looking for the nearest of thousands of ids is slow, and a file with so many faults needs no more hints.
+_MOST_COMPARISONS = 150_000
 
 
 @dataclass
@@ -61,13 +61,13 @@ class References:
     """The ids that references may name, by table; a table that is unknown or unreadable is not checked."""
 
     ids: dict[str, Collection[str]] = field(default_factory=dict)
-    hints: int = 0
+    comparisons: int = 0
 
     def remedy(self, value: str, table: str) -> str:
         """Names the nearest id for a reference that names none."""
-        self.hints += 1
+        self.comparisons += len(self.ids[table])
         what = {"buses": "bus", "branches": "branch", "equipment": "row of the equipment table"}.get(table, table[:-1])
-        return nearest_id(value, self.ids[table] if self.hints <= _MOST_HINTS else (), what)
+        return nearest_id(value, self.ids[table] if self.comparisons <= _MOST_COMPARISONS else (), what)
 
 
 def as_number(text: str) -> float | None:
