@@ -8,7 +8,7 @@ limit. The loading unknown is MW divided by ``Model.scale_mw``.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -56,14 +56,26 @@ class Equations:
         self.low = np.array([x.low for x in d], dtype=float)
         self.high = np.array([x.high for x in d], dtype=float)
         self.set = np.array([x.set_pu for x in d], dtype=float)
-        self.droop = np.array([x.slope / x.rating for x in d], dtype=float)
         self.gain = np.array([x.gain for x in d], dtype=float)
         self.neutral = np.array([x.neutral for x in d], dtype=float)
-        self.corner_high = np.array([x.corner(x.high) if np.isfinite(x.high) else np.nan for x in d], dtype=float)
-        self.corner_low = np.array([x.corner(x.low) if np.isfinite(x.low) else np.nan for x in d], dtype=float)
+        self.ease(0.0)
         self.fixed = self.high - self.low <= 1e-12
         self._moving = np.flatnonzero(model.entries.device >= 0)
+        self._ratios = 2 * self.n + np.flatnonzero(self.kind == TAP)
         self._layout()
+
+    def ease(self, extra: float) -> None:
+        """Give every device but generators so much more slope [pu per pu of its control]; 0 is the model itself.
+
+        A base state that Newton does not find at once is found by taking the extra slope away little by little.
+        """
+        devices = [
+            x if x.kind == GENERATOR or not extra else replace(x, slope=x.slope + extra * x.rating)
+            for x in self.model.devices
+        ]
+        self.droop = np.array([x.slope / x.rating for x in devices], dtype=float)
+        self.corner_high = np.array([x.corner(x.high) if np.isfinite(x.high) else np.nan for x in devices], dtype=float)
+        self.corner_low = np.array([x.corner(x.low) if np.isfinite(x.low) else np.nan for x in devices], dtype=float)
 
     def _layout(self) -> None:
         """Make the sparsity pattern once: every entry that any mode may need."""
@@ -209,7 +221,7 @@ class Equations:
                 return None
             largest = float(np.abs(step[: 2 * self.n]).max())
             y -= step * min(1.0, cap / largest) if largest > cap else step
-            if (y[self.n : 2 * self.n] <= 0.0).any():
+            if (y[self.n : 2 * self.n] <= 0.0).any() or (self._moving.size and (y[self._ratios] <= 0.0).any()):
                 return None
         return y if float(np.abs(self.residual(y, modes, segment)).max()) < TOLERANCE else None
 
@@ -296,11 +308,16 @@ def settle(equations: Equations, y: Floats, modes: Modes, rounds: int = 60) -> S
     """Solve at the loading in ``y``, limits respected: converge, then switch, until no limit is violated.
 
     The first rounds switch every violated device, later ones the worst alone. A device at its limit goes
-    back to regulating as soon as its voltage asks for it. None where no such solution was found.
+    back to regulating as soon as its voltage asks for it. None where no such solution was found, be it that
+    the same modes come back a third time.
     """
     segment = equations.model.schedule.segment(float(y[-1]) * equations.model.scale_mw)
     modes = modes.copy()
+    seen: dict[bytes, int] = {}
     for number in range(rounds):
+        seen[modes.tobytes()] = seen.get(modes.tobytes(), 0) + 1
+        if seen[modes.tobytes()] > 3:
+            return None
         solved = equations.solve(y, modes, segment, rounds=30, cap=0.5)
         if solved is None:
             return None

@@ -7,7 +7,7 @@ from dataclasses import dataclass
 import numpy as np
 from scipy.sparse.linalg import splu
 
-from compsize.verify.devices import TAP, Device
+from compsize.verify.devices import GENERATOR, TAP, Device
 from compsize.verify.flow import Equations, Singular, State, settle
 from compsize.verify.follow import Nose, Path, PathKind, mismatch_mva
 from compsize.verify.model import Complex, Model
@@ -15,14 +15,15 @@ from compsize.verify.pickup import Floats
 
 __all__ = ["Held", "Nose", "PathKind", "PointCheck", "check_point", "holds", "operating_point", "trace", "upper"]
 
-_SEARCH = (-0.02, -0.05, -0.1, -0.2, -0.35, -0.5, -0.75, -1.0, 0.1, 0.25, 0.5, 1.0)
+_SEARCH = (-0.02, -0.05, -0.1, -0.2, -0.35, -0.5, -0.75, -1.0, 0.1, 0.25, 0.5, 0.75, 1.0, 1.5, 2.0, 3.0)
 """Loadings, as parts of the base, at which a start is sought where the base load has none."""
 
 
 def operating_point(equations: Equations, t_mw: float = 0.0) -> State | None:
     """The settled state at a loading on the upper branch, or None.
 
-    Started from the model's voltages with all devices regulating, then from a flat profile.
+    Started from the model's voltages with all devices regulating, then from a flat profile, then with devices
+    eased, their slopes brought back to what they are step by step.
     """
     first = equations.start()
     flat = first.copy()
@@ -34,7 +35,23 @@ def operating_point(equations: Equations, t_mw: float = 0.0) -> State | None:
         state = settle(equations, y, equations.free_modes())
         if state is not None and upper(equations, state):
             return state
-    return None
+    return _eased(equations, first)
+
+
+def _eased(equations: Equations, y: Floats) -> State | None:
+    """The settled state by way of devices with more slope; None where that way ends."""
+    if all(d.kind == GENERATOR for d in equations.model.devices):
+        return None
+    modes = equations.free_modes()
+    state = None
+    for extra in (1.0, 0.3, 0.1, 0.03, 0.01, 0.003, 0.0):
+        equations.ease(extra)
+        state = settle(equations, y, modes)
+        if state is None:
+            break
+        y, modes = state.y, state.modes
+    equations.ease(0.0)
+    return state if state is not None and upper(equations, state) else None
 
 
 def upper(equations: Equations, state: State) -> bool:
@@ -107,7 +124,7 @@ def holds(model: Model, required_mw: float) -> Held:
             state, worst = end
             return Held(True, required_mw, equations.voltages(state.y), worst, equations.factorisations)
     nose = trace(model, stop_mw=required_mw)
-    held = nose.kind in ("reached", "none") and nose.t_mw >= required_mw
+    held = nose.kind == "reached" or (nose.kind == "none" and nose.t_mw >= required_mw)
     return Held(held, nose.t_mw, nose.v, nose.worst_mva, equations.factorisations + nose.factorisations, nose)
 
 
