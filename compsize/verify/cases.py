@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -137,14 +137,21 @@ class Cases:
         return build_model(self.study.network, self.study.growth, elements, added, load_factor)
 
 
-def parse_off(text: str) -> dict[Row, int]:
-    """Steps off from ``SITE:EQUIPMENT:COUNT`` joined by spaces; raises UsageError for anything else."""
+def parse_off(text: str, rows: Iterable[Row]) -> dict[Row, int]:
+    """Steps off from ``SITE:EQUIPMENT:COUNT`` joined by spaces, of the ``rows`` that there are.
+
+    Names may hold spaces and colons, so they are looked for, the longest first. Raises UsageError for anything else.
+    """
+    known = {f"{site}:{equipment}:": (site, equipment) for site, equipment in rows}
     off: dict[Row, int] = {}
-    for word in text.split():
-        parts = word.rsplit(":", 2)
-        if len(parts) != 3 or not parts[2].isdecimal():
-            raise UsageError(f"{word!r} does not read SITE:EQUIPMENT:COUNT")
-        off[parts[0], parts[1]] = off.get((parts[0], parts[1]), 0) + int(parts[2])
+    left = text.strip()
+    while left:
+        start = next((name for name in sorted(known, key=len, reverse=True) if left.startswith(name)), None)
+        count, _, rest = left[len(start or "") :].partition(" ")
+        if start is None or not count.isdecimal():
+            raise UsageError(f"{left!r} does not read SITE:EQUIPMENT:COUNT")
+        off[known[start]] = off.get(known[start], 0) + int(count)
+        left = rest.lstrip()
     return off
 
 

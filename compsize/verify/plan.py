@@ -128,7 +128,7 @@ def _sample(study: Study, cases: Sequence[CaseMargin], required: Mapping[str, fl
 def _check_case(after: Cases, case: CaseMargin, required: float | None, compare: bool) -> _Finding:
     """Margin of one case against its requirement, and its nose against the reported one."""
     try:
-        off = parse_off(case.steps_off)
+        off = parse_off(case.steps_off, [item.row for item in after.installed])
     except UsageError as error:
         return _Finding(0.0, (f"{case.case}: {error}",))
     wrong = _wrong_steps(after, off)

@@ -10,6 +10,7 @@ from typing import Any
 import pytest
 from verify_networks import everything, read, two_buses
 
+from compsize.errors import UsageError
 from compsize.plan.records import CaseMargin, Plan, PlanRow
 from compsize.study.records import (
     Candidate,
@@ -288,9 +289,15 @@ def test_blank_reference_is_the_voltage_without_the_plan() -> None:
     assert model.devices[-1].set_pu == pytest.approx(bare, abs=1e-9)
 
 
-def test_steps_off_is_read_from_the_right() -> None:
-    """A site name may hold a colon; the last two parts are the equipment and the count."""
-    assert parse_off("N:1:C10:2 L:C10:1") == {("N:1", "C10"): 2, ("L", "C10"): 1}
+def test_steps_off_of_names_with_spaces_and_colons() -> None:
+    """Names are looked for as they are, so a site ``N 1`` or an equipment ``bank 10:2`` is read right."""
+    rows = [("N 1", "bank 10"), ("N 1", "bank 10:2"), ("L", "C10")]
+    off = parse_off("N 1:bank 10:2:3 N 1:bank 10:2 L:C10:1", rows)
+    assert off == {("N 1", "bank 10:2"): 3, ("N 1", "bank 10"): 2, ("L", "C10"): 1}
+    assert parse_off("", rows) == {}
+    for wrong in ("L:C10", "L:C10:one", "M:C10:1"):
+        with pytest.raises(UsageError, match="does not read"):
+            parse_off(wrong, rows)
 
 
 def test_fourteen_buses_with_banks_at_two_sites() -> None:

@@ -6,8 +6,9 @@ import csv
 
 import numpy as np
 import pytest
-from verify_networks import CDF, DATA, everything, read, read_cdf
+from verify_networks import CDF, DATA, everything, read
 
+from compsize.study.read_network import read_network
 from compsize.verify.flow import Equations
 from compsize.verify.model import Added, Model, build_model
 from compsize.verify.path import check_point, operating_point, trace
@@ -64,7 +65,7 @@ needs_cdf = pytest.mark.skipif(not CDF.exists(), reason="the IEEE CDF files are 
 @needs_cdf
 def test_published_state_of_14_buses() -> None:
     """Voltages and the angle of bus 14 as the IEEE CDF file publishes them."""
-    net = read_cdf("ieee14cdf.txt")
+    net = read_network(CDF / "ieee14cdf.txt")
     case = build_model(net, everything(net))
     assert isinstance(case, Model)
     equations = Equations(case)
@@ -81,7 +82,7 @@ def test_published_state_of_14_buses() -> None:
 def test_nose_of_14_buses_as_quoted(limits: bool, times: float, within: float) -> None:
     """Loads and generation of the IEEE 14-bus system scaled: 4.0602 times the base without reactive limits
     (widely quoted), 1.77800 with them (computed twice by other means)."""
-    net = read_cdf("ieee14cdf.txt")
+    net = read_network(CDF / "ieee14cdf.txt")
     case = build_model(net, everything(net, generator_limits=limits))
     assert isinstance(case, Model)
     assert 1.0 + trace(case).t_mw / case.base_mw == pytest.approx(times, abs=within)

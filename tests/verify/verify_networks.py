@@ -1,15 +1,14 @@
-"""Small networks for tests, built in memory or read from a folder of tables."""
+"""Small networks for tests, built in memory, and those that the tests carry."""
 
 from __future__ import annotations
 
-import csv
-import tomllib
 from dataclasses import fields
 from pathlib import Path
 from typing import Any
 
 import numpy as np
 
+from compsize.study.read_network import read_network
 from compsize.study.records import (
     Branches,
     Buses,
@@ -58,13 +57,9 @@ def network(base_mva: float = 100.0, **rows: list[dict[str, Any]]) -> NetworkTab
     return NetworkTables(base_mva, 50.0, "", "", **tables)
 
 
-def read(name: str, folder: Path = DATA) -> NetworkTables:
-    """A network from a folder of CSV tables."""
-    rows = {}
-    for file in (folder / name).glob("*.csv"):
-        with file.open(newline="") as handle:
-            rows[file.stem] = [{k: v for k, v in row.items() if v != ""} for row in csv.DictReader(handle)]
-    return network(tomllib.loads((folder / name / "network.toml").read_text())["base_mva"], **rows)
+def read(name: str) -> NetworkTables:
+    """One of the networks that the tests carry."""
+    return read_network(DATA / name)
 
 
 def everything(net: NetworkTables, **options: Any) -> Growth:
@@ -79,37 +74,6 @@ def everything(net: NetworkTables, **options: Any) -> Growth:
         power_factor="as base",
         **options,
     )
-
-
-def read_cdf(name: str) -> NetworkTables:
-    """A network from a file in the IEEE common data format (fixed columns), its solved state left out."""
-    lines = (CDF / name).read_text().splitlines()
-    base = float(lines[0][31:37])
-    first = next(k for k, line in enumerate(lines) if line.startswith("BUS DATA"))
-    second = next(k for k, line in enumerate(lines) if line.startswith("BRANCH DATA"))
-    rows: dict[str, list[dict[str, Any]]] = {k: [] for k in ("buses", "loads", "branches", "generators", "shunts")}
-    for line in lines[first + 1 :]:
-        if line.startswith("-999"):
-            break
-        bus, kind = line[0:4].strip(), int(line[24:26])
-        p, q, p_gen, set_pu = (float(line[a:b]) for a, b in ((40, 49), (49, 59), (59, 67), (84, 90)))
-        high, low, g, b = (float(line[a:b]) for a, b in ((90, 98), (98, 106), (106, 114), (114, 122)))
-        rows["buses"].append({"bus": bus})
-        if p or q:
-            rows["loads"].append({"load": f"L{bus}", "bus": bus, "p_mw": p, "q_mvar": q})
-        if kind >= 2:
-            limits = {} if kind == 3 else {"q_min_mvar": low, "q_max_mvar": high}
-            unit = {"generator": f"G{bus}", "bus": bus, "p_mw": p_gen, "v_set_pu": set_pu, "slack": kind == 3}
-            rows["generators"].append(unit | limits)
-        if g or b:
-            rows["shunts"].append({"shunt": f"S{bus}", "bus": bus, "b_mvar": b * base, "g_mw": g * base})
-    for number, line in enumerate(lines[second + 1 :]):
-        if line.startswith("-999"):
-            break
-        r, x, b, tap = (float(line[a:b]) for a, b in ((19, 29), (29, 40), (40, 50), (76, 82)))
-        ends = {"from_bus": line[0:4].strip(), "to_bus": line[5:9].strip()}
-        rows["branches"].append({"branch": str(number + 1), "r_pu": r, "x_pu": x, "b_pu": b, "tap": tap or 1.0} | ends)
-    return network(base, **rows)
 
 
 def two_buses(
