@@ -7,7 +7,19 @@ import numpy as np
 from compsize.flow.equations import factorise, loading_column, reactive_slope, residual
 from compsize.flow.jit import kernel
 from compsize.flow.lu import solve
-from compsize.nose.newton import ALPHA, FACTORS, LAM, PIECE, PIN, SIGN, SOLVES, floating, newton
+from compsize.nose.newton import (
+    ALPHA,
+    FACTORS,
+    LAM,
+    LOADING,
+    MAGNITUDE,
+    PIECE,
+    PIN,
+    SIGN,
+    SOLVES,
+    floating,
+    newton,
+)
 
 LIMIT_TOLERANCE = 1e-9
 
@@ -92,18 +104,21 @@ def first_root(d0, d1, d2, tiny):  # type: ignore[no-untyped-def]
 
 
 @kernel
-def settle(pattern, case, state, factors, work, target, rounds):  # type: ignore[no-untyped-def]
-    """Solve at the loading ``target`` and bring every device into a segment that fits; 0 done, 1 failed.
+def settle(pattern, case, state, factors, work, mode, target, rounds):  # type: ignore[no-untyped-def]
+    """Solve at the loading ``target`` (or with the pinned magnitude at it) and bring every device into a segment
+    that fits; 0 done, 1 failed.
 
     The equations are solved before any limit is looked at; then all violated devices switch for two rounds,
     later only the worst, each way allowed.
     """
     real, whole = work.real, work.whole
-    whole[PIN] = -1
-    real[ALPHA] = 0.0
-    real[LAM] = target
+    if mode == LOADING:
+        whole[PIN] = -1
+        real[ALPHA] = 0.0
+        real[LAM] = target
     for turn in range(rounds):
-        if newton(pattern, case, state, factors, work, 0, -1, target, False, 25 if turn == 0 else 15, True) != 0:
+        tries = 25 if turn == 0 else 15
+        if newton(pattern, case, state, factors, work, mode, -1, target, False, tries, mode == LOADING) != 0:
             return 1
         worst = 0.0
         chosen = -1
@@ -118,13 +133,28 @@ def settle(pattern, case, state, factors, work, target, rounds):  # type: ignore
                 weight = 1.0 if case.hold[s] and case.tapof[i] < 0 else 10.0
                 if turn < 2:
                     state.seg[i] += move
+                    if i == whole[PIN]:
+                        return 1
                 elif weight * out > worst:
                     worst, chosen, step = weight * out, i, move
         if count == 0:
             return 0
         if turn >= 2:
+            if chosen == whole[PIN]:
+                return 1
             state.seg[chosen] += step
     return 1
+
+
+@kernel
+def step_back(pattern, case, state, factors, work, pin, lift, rounds):  # type: ignore[no-untyped-def]
+    """From a near nose to a point before this case's nose: the pinned magnitude ``lift`` higher; 0 done, 1 failed.
+
+    ``work.real[LAM]`` holds the near nose's loading.
+    """
+    work.whole[PIN] = pin
+    work.real[ALPHA] = max(1.0, case.stiff[pin])
+    return settle(pattern, case, state, factors, work, MAGNITUDE, state.v[pin] + lift, rounds)
 
 
 @kernel

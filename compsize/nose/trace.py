@@ -17,6 +17,7 @@ from compsize.flow.second import live_weights, second_along
 from compsize.nose.limits import allowance, earliest, first_root, refactor, response, support_step
 from compsize.nose.newton import (
     ALPHA,
+    BRANCH,
     CORNER,
     CULPRIT,
     CURVE,
@@ -111,6 +112,7 @@ def trace(pattern, case, state, factors, work, top, cap, log):  # type: ignore[n
             return STUCK
         if sgn == 0.0:
             sgn = sign
+            real[BRANCH] = sign
         if pending == EVENT:
             ratio = response(pattern, case, state, factors, work, device, old)
             if (sign if ratio > 0.0 else -sign) != sgn:

@@ -1,0 +1,274 @@
+"""From a case to its nose: the compiled trace with a start that is sure to be on the operating branch."""
+
+from __future__ import annotations
+
+import threading
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from compsize.flow.equations import DEAD, TAP, State, new_state
+from compsize.flow.lu import Factors, new_factors
+from compsize.network.cases import CaseModel
+from compsize.network.grid import Grid
+from compsize.nose.limits import settle, step_back
+from compsize.nose.newton import BRANCH, CULPRIT, FACTORS, LAM, LOADING, LOGGED, PIECE, PIN, WORST, Work, new_work
+from compsize.nose.trace import AT_FOLD, AT_LIMIT, NO_TURN, trace
+
+Floats = NDArray[np.float64]
+
+FOLD, LIMIT, NONE, UNRESOLVED = "fold", "limit", "none", ""
+LONGEST_STEP = 0.05
+LIFT = 0.015
+# Where to look for a start when the base load has no solution: lighter load first, then heavier.
+LIGHTER = (-0.02, -0.05, -0.1, -0.2, -0.35, -0.5, -0.65, -0.8, -0.9, -0.97)
+HEAVIER = (0.05, 0.1, 0.2, 0.4, 0.7)
+
+
+@dataclass(frozen=True, eq=False)
+class Point:
+    """A solved state, in elimination order: angles [rad], magnitudes [pu] and ratios, segments, loading."""
+
+    th: Floats
+    v: Floats
+    seg: NDArray[np.int64]
+    loading: float
+
+
+@dataclass(frozen=True, eq=False)
+class Nose:
+    """Outcome of one evaluation.
+
+    ``kind`` is ``fold``, ``limit``, ``none`` (no turn up to ``point.loading``) or empty (unresolved).
+    ``direction`` is the change of the state towards the nose (loading direction at a limit-induced nose and
+    at ``none``, null vector with falling voltage at a fold), two per node.
+    """
+
+    kind: str
+    loading: float
+    point: Point | None
+    base: Point | None
+    """The solved state at base load; None where there is none or it was not needed."""
+    direction: Floats
+    culprit: int
+    """Node of the device that reaches its limit at a limit-induced nose, else -1."""
+    status: str
+    factorisations: int
+    worst_residual: float
+    sign: float
+    """Sign of the Jacobian's determinant on the branch that was traced."""
+    traced: bool
+    """Traced from the operating point (else from a point next to a near nose)."""
+    log: Floats
+    """[points, 1 + nodes]: loading and magnitudes along the way, if asked for."""
+
+
+class Bench:
+    """Workspaces of one thread for one grid."""
+
+    def __init__(self, grid: Grid) -> None:
+        self.state: State = new_state(grid.count, grid.tap_branches.size)
+        self.factors: Factors = new_factors(grid.pattern)
+        self.work: Work = new_work(grid.count)
+        self.no_log = np.zeros((0, grid.count + 1))
+
+
+class Engine:
+    """Evaluates cases of one grid; safe to call from several threads."""
+
+    def __init__(self, grid: Grid) -> None:
+        self.grid = grid
+        self._local = threading.local()
+        total = float(np.abs(grid.load_p).sum())
+        self.top = 20.0 * max(1.0, total / grid.scale_mw)
+
+    def _bench(self) -> Bench:
+        bench = getattr(self._local, "bench", None)
+        if bench is None:
+            bench = self._local.bench = Bench(self.grid)
+        return bench  # type: ignore[no-any-return]
+
+    def flat(self, model: CaseModel) -> Point:
+        """A start from the tables: their voltages where given, set-points held."""
+        grid = self.grid
+        th, v = np.zeros(grid.count), np.ones(grid.count)
+        th[grid.node], v[grid.node] = grid.th_start, grid.v_start
+        taps = grid.tables.branches.tap
+        for m, k in enumerate(grid.tap_branches.tolist()):
+            v[grid.tap_nodes[m]] = taps[grid.branch_row[k]]
+        return Point(th, v, model.first_segment, 0.0)
+
+    def level(self, model: CaseModel) -> Point:
+        """A start with all angles zero and magnitudes one or at their set-points."""
+        flat = self.flat(model)
+        v = np.ones(self.grid.count)
+        v[self.grid.tap_nodes] = flat.v[self.grid.tap_nodes]
+        for bus, segments in model.chains.items():
+            hold = next((s for s in segments if s.hold), None)
+            if hold is not None:
+                v[self.grid.node[bus]] = hold.coef[0]
+        return Point(np.zeros(self.grid.count), v, model.first_segment, 0.0)
+
+    def _load(self, bench: Bench, model: CaseModel, start: Point) -> None:
+        state = bench.state
+        state.th[:] = start.th
+        state.v[:] = start.v
+        lengths = np.diff(model.case.segptr)
+        fits = (start.seg >= 0) & (start.seg < lengths)
+        state.seg[:] = np.where(fits, start.seg, model.first_segment)
+
+    def _point(self, bench: Bench) -> Point:
+        state = bench.state
+        return Point(state.th.copy(), state.v.copy(), state.seg.copy(), float(bench.work.real[LAM]))
+
+    def settle(self, model: CaseModel, start: Point, loading: float = 0.0) -> Point | None:
+        """The solved state at ``loading`` with every device within its limits, from ``start``; None if not found."""
+        bench = self._bench()
+        self._load(bench, model, start)
+        return self._point(bench) if self._settle(bench, model, loading) else None
+
+    def _settle(self, bench: Bench, model: CaseModel, loading: float) -> bool:
+        bench.work.whole[PIECE] = int(np.searchsorted(model.case.gbreak, loading, side="right")) - 1
+        done = settle(self.grid.pattern, model.case, bench.state, bench.factors, bench.work, LOADING, loading, 60)
+        return bool(done == 0)
+
+    def nose(self, model: CaseModel, start: Point | None = None, points: int = 0, cap: float = LONGEST_STEP) -> Nose:
+        """The first nose on the branch from the operating point, traced event by event.
+
+        ``start`` is a near solved state (the intact network's); ``points`` asks for a log of so many points.
+        """
+        bench = self._bench()
+        bench.work.whole[:] = 0
+        starts = [start, self.flat(model), self.level(model)] if start is not None else [self.flat(model), self.level(model)]
+        base: Point | None = None
+        for candidate in starts:
+            self._load(bench, model, candidate)
+            if self._settle(bench, model, 0.0):
+                base = self._point(bench)
+                break
+        if base is not None:
+            found = self._trace(bench, model, base, base, "", points, cap)
+            if found.kind:
+                return found
+        stuck = base is not None
+        for loading in LIGHTER + HEAVIER:
+            for candidate in starts:
+                self._load(bench, model, candidate)
+                if not self._settle(bench, model, loading):
+                    continue
+                point = self._point(bench)
+                found = self._trace(bench, model, point, base, "", points, cap)
+                if not found.kind:
+                    continue
+                if loading < 0.0 and not stuck and found.kind != NONE and found.loading < 0.0:
+                    status = "no solution at base load"
+                elif loading > 0.0 and not stuck:
+                    status = "no solution at base load, solved from heavier load on"
+                else:
+                    status = ""
+                return self._trace(bench, model, point, base, status, points, cap) if status else found
+        return Nose(
+            UNRESOLVED,
+            float("nan"),
+            None,
+            base,
+            np.zeros(2 * self.grid.count),
+            -1,
+            "unresolved: no nose could be located",
+            int(bench.work.whole[FACTORS]),
+            float("nan"),
+            0.0,
+            True,
+            bench.no_log,
+        )
+
+    def nose_near(self, model: CaseModel, near: Nose, lift: float = LIFT) -> Nose | None:
+        """The first nose beyond a point just before the nose ``near`` of a similar case.
+
+        That point is the near nose with its fastest falling magnitude raised by ``lift``, solved anew with its
+        own limits. None where it cannot be solved, or lies on another branch (the determinant's sign differs):
+        then only :meth:`nose` can tell.
+        """
+        if near.point is None or near.kind not in (FOLD, LIMIT):
+            return None
+        bench = self._bench()
+        bench.work.whole[:] = 0
+        self._load(bench, model, near.point)
+        pin = self._fastest(model, near)
+        if pin < 0:
+            return None
+        bench.work.real[LAM] = near.loading
+        bench.work.whole[PIECE] = int(np.searchsorted(model.case.gbreak, near.loading, side="right")) - 1
+        before = bench.state.v[pin]
+        if step_back(self.grid.pattern, model.case, bench.state, bench.factors, bench.work, pin, lift, 20) != 0:
+            return None
+        if bench.state.v[pin] < before or not bool(np.all(bench.state.v > 0.2)):
+            return None
+        point = self._point(bench)
+        at = float(bench.work.whole[PIECE])
+        if not model.case.gbreak[int(at)] <= point.loading <= model.case.gbreak[int(at) + 1]:
+            return None
+        found = self._trace(bench, model, point, None, near.status, 0, LONGEST_STEP, traced=False, attempts=1)
+        if not found.kind or found.sign != near.sign:
+            return None
+        return found
+
+    def _fastest(self, model: CaseModel, near: Nose) -> int:
+        """The free bus whose magnitude falls fastest at ``near``."""
+        assert near.point is not None
+        fall = near.direction[1::2].copy()
+        case = model.case
+        s = np.maximum(near.point.seg, 0) + case.segptr[:-1]
+        has = (near.point.seg >= 0) & (s < case.segptr[1:])
+        held = np.zeros(fall.size, dtype=bool)
+        held[has] = case.hold[s[has]] == 1
+        fall[held | ((case.role & (DEAD | TAP)) != 0)] = 0.0
+        pin = int(np.argmin(fall))
+        return pin if fall[pin] < 0.0 else -1
+
+    def _trace(
+        self,
+        bench: Bench,
+        model: CaseModel,
+        start: Point,
+        base: Point | None,
+        status: str,
+        points: int,
+        cap: float,
+        traced: bool = True,
+        attempts: int = 3,
+    ) -> Nose:
+        for attempt in (cap, 0.3 * cap, 0.05 * cap)[:attempts]:
+            self._load(bench, model, start)
+            bench.work.real[LAM] = start.loading
+            bench.work.whole[LOGGED] = 0
+            bench.work.whole[PIECE] = int(np.searchsorted(model.case.gbreak, start.loading, side="right")) - 1
+            log = np.zeros((points, self.grid.count + 1)) if points else bench.no_log
+            outcome = trace(
+                self.grid.pattern, model.case, bench.state, bench.factors, bench.work, self.top, attempt, log
+            )
+            if outcome in (AT_FOLD, AT_LIMIT, NO_TURN):
+                break
+        else:
+            outcome = -1
+        kind = {AT_FOLD: FOLD, AT_LIMIT: LIMIT, NO_TURN: NONE}.get(outcome, UNRESOLVED)
+        work = bench.work
+        direction = work.d1.copy()
+        if kind == FOLD:
+            direction *= -np.sign(direction[2 * work.whole[PIN] + 1])
+        return Nose(
+            kind,
+            float(work.real[LAM]),
+            self._point(bench),
+            base,
+            direction,
+            int(work.whole[CULPRIT]),
+            status if kind else "unresolved: no nose could be located",
+            int(work.whole[FACTORS]),
+            float(work.real[WORST]),
+            float(work.real[BRANCH]),
+            traced,
+            log[: int(work.whole[LOGGED])],
+        )
+
