@@ -2,14 +2,21 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
+import math
+import time
+from collections.abc import Callable, Sequence
 from importlib.metadata import version
 
 from compsize.margin.assess import Bench, assess, prepare
 from compsize.margin.pool import default_workers
-from compsize.plan.records import Counts, MarginsResult
+from compsize.margin.curve import nose_curve
+from compsize.network.cases import build_case
+from compsize.network.plans import additions
+from compsize.plan.records import CaseMargin, Counts, MarginsResult, NoseCurve, Plan, SizeResult, Verification
 from compsize.report.basis import basis_of
+from compsize.sizing.solve import Solved, rows_after, runner_up, solve
 from compsize.study.records import Study
+from compsize.verify.plan import verify_plan
 
 Progress = Callable[[str, int, int | None], None]
 """Told what is going on: a stage in words, how much is done, and of how much (None: not known)."""
@@ -55,3 +62,120 @@ def margins(study: Study, *, workers: int | None = None, progress: Progress | No
         basis=basis_of(study),
         notes=study_notes(study, bench),
     )
+
+
+def size(
+    study: Study,
+    *,
+    workers: int | None = None,
+    time_limit: float | None = None,
+    proof: str = "auto",
+    progress: Progress | None = None,
+) -> SizeResult:
+    """The least-cost plan that keeps every required margin, with the proof that nothing is cheaper.
+
+    Args:
+        study: a checked study with candidates.
+        workers: threads; None uses the processors at hand. The answer does not depend on it.
+        time_limit: seconds for the search and the proof; None: no limit.
+        proof: what the bound shall rest on: ``auto``, ``full``, ``covers``.
+        progress: called as the work goes on.
+
+    Returns:
+        A result with the same fields whatever the outcome; ``status`` says which it is.
+    """
+    started = time.monotonic()
+    bench = prepare(study)
+    threads = workers or default_workers()
+    solved = solve(bench, threads, time_limit, progress, proof)
+    zero = tuple(0 for _ in bench.choices)
+    before, _ = rows_after(bench, solved, zero, threads)
+    after, _ = (before, {}) if solved.shown == zero else rows_after(bench, solved, solved.shown, threads)
+    plan = None if solved.steps is None else solved.problem.plan(solved.steps)
+    cost = None if solved.steps is None else solved.problem.cost(solved.steps)
+    verification = None
+    if plan is not None:
+        if progress is not None:
+            progress("independent verification", 0, None)
+        verification = _verified(study, plan, after)
+    curves = _curves(bench, solved, before, after)
+    gap = None
+    if cost is not None and solved.bound is not None:
+        gap = 0.0 if cost <= solved.bound else 100.0 * (cost - solved.bound) / cost
+    runners = runner_up(solved.problem, solved.steps, solved.judge) if solved.steps is not None else ()
+    noses = solved.noses
+    return SizeResult(
+        title=study.title,
+        status=solved.status,  # type: ignore[arg-type]
+        sentence=solved.sentence,
+        plan=plan,
+        cost=cost,
+        cost_bound=solved.bound,
+        gap_pct=gap,
+        proof=solved.proof,
+        cases_before=before,
+        cases_after=after,
+        voltages=(),
+        runners_up=runners,
+        verification=verification,
+        curves=curves,
+        counts=Counts(
+            noses=noses.count,
+            factorisations=noses.factorisations,
+            master_solves=solved.masters,
+            plans_walked=solved.walked,
+            noses_traced=noses.traced,
+        ),
+        study_hash=study.hash,
+        version=version("compsize"),
+        basis=basis_of(study),
+        notes=study_notes(study, bench),
+        seconds=time.monotonic() - started,
+        report=(
+            ("project", study.report.project),
+            ("author", study.report.author),
+            ("currency", study.report.currency),
+            ("price_year", study.report.price_year),
+            ("notes", study.report.notes),
+        ),
+    )
+
+
+def _verified(study: Study, plan: Plan, after: Sequence[CaseMargin]) -> Verification:
+    required = {row.case: row.required_mw for row in after if row.required_mw is not None}
+    return verify_plan(study, plan, after, required)
+
+
+def _curves(
+    bench: Bench, solved: Solved, before: Sequence[CaseMargin], after: Sequence[CaseMargin], most: int = 6
+) -> tuple[NoseCurve, ...]:
+    """Curves before and after of the cases with least to spare, before the plan and with it."""
+
+    def spare(row: CaseMargin) -> float:
+        if row.margin_mw is None:
+            return math.inf
+        return row.margin_mw - (row.required_mw or 0.0)
+
+    known = {row.case: row for row in before}
+    order = sorted((r for r in after if r.margin_mw is not None and r.case in known), key=lambda r: (spare(r), r.case))
+    chosen = list(dict.fromkeys([r.case for r in order[: most - 1]] + [r.case for r in sorted(known.values(), key=spare)[:1]]))
+    if "intact" not in chosen:
+        chosen.append("intact")
+    specs = {t.spec.name: t.spec for t in solved.noses.targets}
+    later = {row.case: row for row in after}
+    zero = tuple(0 for _ in bench.choices)
+    found = []
+    for name in chosen:
+        if name not in specs or name not in later:
+            continue
+        bus = later[name].weakest_bus or known[name].weakest_bus
+        if not bus:
+            continue
+        for word, row, steps in (("before", known[name], zero), ("after", later[name], solved.shown)):
+            if word == "after" and steps == zero:
+                continue
+            model = build_case(bench.grid, specs[name].elements, additions(bench.choices, steps))
+            curve = nose_curve(bench, model, row, word, bus)
+            if curve is not None:
+                found.append(curve)
+    return tuple(found)

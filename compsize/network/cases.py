@@ -112,30 +112,27 @@ def build_case(
     label = _parts(grid, lost["branch"])
     slack = grid.slack_unit
     if label is not None:
-        load_at = np.zeros(n)
-        np.add.at(load_at, grid.load_bus, np.abs(grid.load_p) * load_on)
-        per_part = np.bincount(label, weights=load_at)
         size = np.bincount(label)
-        main = int(np.lexsort((size, per_part))[-1])
-        if label[grid.gen_bus[slack]] != main:
+        # The part with most buses goes on; of equal ones that with the slack unit.
+        main = int(np.argmax(2 * size + (np.arange(size.size) == label[grid.gen_bus[slack]])))
+        if unit_on[slack] and label[grid.gen_bus[slack]] != main:
             status, evaluable = "not evaluable: the lost part holds the slack unit", False
         dead = label != main
-        for part in range(per_part.size):
-            if part != main and per_part[part] > 0.0 and np.any(unit_on & (label[grid.gen_bus] == part)):
-                status, evaluable = "not evaluable: the network splits into parts with load and generation", False
         gone = float(grid.load_p[load_on & dead[grid.load_bus]].sum())
+        units = int((unit_on & dead[grid.gen_bus]).sum())
         if evaluable:
             names = [tables.buses.bus[k] for k in np.flatnonzero(dead)]
             shown = ", ".join(names[:4]) + (f" and {len(names) - 4} more" if len(names) > 4 else "")
             status = f"cut off and dropped: bus {shown} with {gone:g} MW of load"
+            if units:
+                status += f" and {units} unit{'s' if units > 1 else ''}"
         load_on &= ~dead[grid.load_bus]
         unit_on &= ~dead[grid.gen_bus]
     if not unit_on.any():
         status, evaluable = "not evaluable: no unit is left in service", False
         unit_on = grid.gen_on.copy()
     if not unit_on[slack]:
-        size_of = np.where(np.isfinite(grid.gen_pmax), grid.gen_pmax, grid.gen_p)
-        slack = int(np.argmax(np.where(unit_on, size_of, -np.inf)))
+        slack = int(np.argmax(np.where(unit_on, grid.gen_p, -np.inf)))
         if evaluable:
             said = f"slack passed to {tables.generators.generator[slack]}"
             status = said if status == "ok" else f"{status}; {said}"

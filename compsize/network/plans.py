@@ -53,7 +53,7 @@ def build_choices(grid: Grid, candidates: Sequence[Candidate], v_intact: NDArray
         equipment = candidate.equipment
         bus = grid.bus_index[candidate.site]
         rated = equipment.kv if equipment.kv is not None else float(grid.tables.buses.kv[bus])
-        ratio = (float(grid.tables.buses.kv[bus]) / rated) ** 2 if equipment.kind == "bank" else 1.0
+        ratio = (float(grid.tables.buses.kv[bus]) / rated) ** 2
         v_ref = float("nan")
         if equipment.kind != "bank":
             v_ref = equipment.v_ref_pu if equipment.v_ref_pu is not None else float(v_intact[bus])
@@ -62,7 +62,7 @@ def build_choices(grid: Grid, candidates: Sequence[Candidate], v_intact: NDArray
                 candidate,
                 bus,
                 equipment.step_mvar * ratio / grid.tables.base_mva,
-                equipment.q_absorb_mvar / grid.tables.base_mva,
+                equipment.q_absorb_mvar * ratio / grid.tables.base_mva,
                 v_ref,
             )
         )

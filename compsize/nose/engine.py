@@ -214,6 +214,41 @@ class Engine:
             return None
         return found
 
+    def beyond(self, model: CaseModel, nose: Nose, node: int, drop: float = 0.01) -> list[tuple[float, float]]:
+        """Points (loading, magnitude of ``node``) past a nose, with falling voltage; for pictures only."""
+        assert nose.point is not None
+        bench = self._bench()
+        self._load(bench, model, nose.point)
+        if nose.culprit >= 0:
+            # The device that reached its limit stays there.
+            node_seg = bench.state.seg[nose.culprit]
+            for move in (1, -1):
+                trial = node_seg + move
+                if 0 <= trial < int(model.case.segptr[nose.culprit + 1] - model.case.segptr[nose.culprit]):
+                    bench.state.seg[nose.culprit] = trial
+                    break
+        near = Nose(
+            nose.kind, nose.loading, self._point(bench), None, nose.direction, -1, "", 0, 0.0, nose.sign, True, nose.log
+        )
+        pin = self._fastest(model, near)
+        if pin < 0:
+            return []
+        bench.work.whole[:] = 0
+        bench.work.real[LAM] = nose.loading
+        bench.work.whole[PIECE] = int(np.searchsorted(model.case.gbreak, nose.loading, side="right")) - 1
+        found = []
+        low = nose.loading - 0.6 * abs(nose.loading)
+        for _ in range(120):
+            start = self._point(bench)
+            lift = -drop * min(1.0, 0.2 + float(start.v[pin]))
+            if step_back(self.grid.pattern, model.case, bench.state, bench.factors, bench.work, pin, lift, 20) != 0:
+                break
+            loading = float(bench.work.real[LAM])
+            if loading > nose.loading or loading < low or bench.state.v[pin] < 0.05:
+                break
+            found.append((loading, float(bench.state.v[node])))
+        return found
+
     def _fastest(self, model: CaseModel, near: Nose) -> int:
         """The free bus whose magnitude falls fastest at ``near``."""
         assert near.point is not None

@@ -137,8 +137,7 @@ def _pickup(
 ) -> tuple[Schedule, list[int]]:
     """Schedule of all units in service but the slack, and their table rows.
 
-    Lost generation is shared first, like added load of the same MW, among the units left. By
-    ``proportional`` it goes by p_mw over the p_mw of all units left, the slack's part being its remainder.
+    Lost generation is shared first, like added load of the same MW.
     """
     table = network.generators
     units = [int(k) for k in np.flatnonzero(left.generators) if k != left.slack]
@@ -149,20 +148,18 @@ def _pickup(
     lost_mw = float(table.p_mw[before & ~left.generators].sum())
     if growth.pickup == "proportional":
         weight = p / total_mw if total_mw else np.zeros(len(p))
-        total_p = float(table.p_mw[everyone].sum())
-        weight_lost = p / total_p if total_p else np.zeros(len(p))
     elif growth.pickup == "slack":
-        weight = weight_lost = np.zeros(len(p))
+        weight = np.zeros(len(p))
     else:
         size = table.p_max_mw - table.p_mw if growth.pickup == "headroom" else table.pickup
         size = np.where(np.isnan(size), 0.0, size)
         total = float(size[everyone].sum())
-        weight = weight_lost = size[units] / total if total else np.zeros(len(p))
+        weight = size[units] / total if total else np.zeros(len(p))
     p_max = np.full(len(p), np.inf)
     if growth.pickup_limits:
         p_max = np.where(np.isnan(table.p_max_mw[units]), np.inf, table.p_max_mw[units])
     if lost_mw:
-        first = fill(p, weight_lost, p_max)
+        first = fill(p, weight, p_max)
         p = first.power(lost_mw, first.segment(lost_mw))[0]
     if change_mw:
         first = fill(p, weight, p_max)
