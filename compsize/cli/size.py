@@ -7,9 +7,10 @@ from typing import TYPE_CHECKING, Literal
 
 import click
 
-from compsize.cli.codes import DONE, STOPPED, UNMET
+from compsize.cli.codes import DONE, INTERNAL, STOPPED, UNMET
 from compsize.cli.options import Shared, out_option, shared_options, study_argument
 from compsize.cli.progress import progress
+from compsize.errors import Fault, InputError
 
 if TYPE_CHECKING:
     from compsize.plan.records import SizeResult
@@ -45,6 +46,9 @@ def command(study: Path, out: Path, plan_file: Path | None, proof: Means, shared
     from compsize.study.read_study import read_study
 
     found = read_study(study)
+    if not found.candidates:
+        remedy = "Add [candidates], or compute the margins alone by `compsize margins`."
+        raise InputError([Fault("study.toml", "no candidates are named, so there is nothing to build from.", remedy)])
     plan = None if plan_file is None else read_plan(plan_file, found)
     check_folder(out, shared.overwrite)
     announce_compilation(shared)
@@ -59,7 +63,12 @@ def command(study: Path, out: Path, plan_file: Path | None, proof: Means, shared
 
 
 def exit_code(result: SizeResult, judged: bool) -> int:
-    """The exit code of a result; ``judged``: the plan was given, so that no proof of least cost is owed."""
+    """The exit code of a result; ``judged``: the plan was given, so that no proof of least cost is owed.
+
+    A plan that the search holds good and the verification does not is a fault of the program.
+    """
+    if result.status in ("optimal", "feasible") and result.verification is not None and not result.verification.passed:
+        return INTERNAL
     if result.status == "unreachable":
         return UNMET
     if result.status == "optimal" or (judged and result.status == "feasible"):
