@@ -38,6 +38,20 @@ def new_factors(pattern: Pattern) -> Factors:
 
 
 @kernel
+def copy_into(target, source):  # type: ignore[no-untyped-def]
+    """target := source, element by element (a slice assignment costs seconds of compilation)."""
+    for i in range(target.size):
+        target[i] = source[i]
+
+
+@kernel
+def clear(target):  # type: ignore[no-untyped-def]
+    """target := 0."""
+    for i in range(target.size):
+        target[i] = 0.0
+
+
+@kernel
 def eliminate_row(i, pattern, factors):  # type: ignore[no-untyped-def]
     """Eliminate row ``i``, whose blocks stand in ``factors.row``; the sign of its pivot's determinant (0: singular).
 

@@ -9,6 +9,7 @@ from __future__ import annotations
 
 from compsize.flow.equations import DEAD, SLACK, TAP
 from compsize.flow.jit import kernel
+from compsize.flow.lu import clear
 
 
 @kernel
@@ -122,7 +123,7 @@ def pulled_back(pattern, case, state, lam, w, y, out):  # type: ignore[no-untype
     v = state.v
     e, f = state.e, state.f
     dlam = 0.0
-    out[:] = 0.0
+    clear(out)
     for i in range(v.size):
         wp, wq = w[2 * i], w[2 * i + 1]
         if wp == 0.0 and wq == 0.0:

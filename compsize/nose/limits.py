@@ -6,7 +6,7 @@ import numpy as np
 
 from compsize.flow.equations import factorise, loading_column, reactive_slope, residual
 from compsize.flow.jit import kernel
-from compsize.flow.lu import solve
+from compsize.flow.lu import clear, copy_into, solve
 from compsize.nose.newton import (
     ALPHA,
     FACTORS,
@@ -26,12 +26,12 @@ LIMIT_TOLERANCE = 1e-9
 
 @kernel
 def support_step(case, i, s, above):  # type: ignore[no-untyped-def]
-    """Change of segment (+1 more support, -1 less) when the floating quantity leaves its range at that end."""
+    """Change of segment (+1 more support, -1 less) when the floating quantity leaves its range above (1) or below (0)."""
     k = case.tapof[i]
     if case.hold[s]:
-        up = above if k < 0 or case.tapval[k, 5] > 0.0 else not above
+        up = above == 1 if k < 0 or case.tapval[k, 5] > 0.0 else above == 0
     else:
-        up = not above
+        up = above == 0
     return 1 if up else -1
 
 
@@ -50,8 +50,8 @@ def excess(case, state, i):  # type: ignore[no-untyped-def]
     z = floating(case, state, i)
     over, under = z - case.high[s], case.low[s] - z
     if over >= under:
-        return over, support_step(case, i, s, True)
-    return under, support_step(case, i, s, False)
+        return over, support_step(case, i, s, np.int64(1))
+    return under, support_step(case, i, s, np.int64(0))
 
 
 @kernel
@@ -116,9 +116,12 @@ def settle(pattern, case, state, factors, work, mode, target, rounds):  # type: 
         whole[PIN] = -1
         real[ALPHA] = 0.0
         real[LAM] = target
+    nobody = np.int64(-1)
+    anew = np.int64(0)
+    wide = np.int64(1 if mode == LOADING else 0)
     for turn in range(rounds):
-        tries = 25 if turn == 0 else 15
-        if newton(pattern, case, state, factors, work, mode, -1, target, False, tries, mode == LOADING) != 0:
+        tries = np.int64(25 if turn == 0 else 15)
+        if newton(pattern, case, state, factors, work, mode, nobody, target, anew, tries, wide) != 0:
             return 1
         worst = 0.0
         chosen = -1
@@ -163,7 +166,7 @@ def response(pattern, case, state, factors, work, i, old):  # type: ignore[no-un
     pin, alpha = work.whole[PIN], work.real[ALPHA]
     lam = work.real[LAM]
     z = work.y_f
-    z[:] = 0.0
+    clear(z)
     z[2 * i + 1] = 1.0
     solve(pattern, factors, z)
     work.whole[SOLVES] += 1
@@ -193,10 +196,10 @@ def refactor(pattern, case, state, factors, work):  # type: ignore[no-untyped-de
     if sign == 0.0:
         return 0.0
     loading_column(case, state, whole[PIECE], work.load)
-    work.y_l[:] = work.load
+    copy_into(work.y_l, work.load)
     solve(pattern, factors, work.y_l)
     if alpha != 0.0:
-        work.y_e[:] = 0.0
+        clear(work.y_e)
         work.y_e[2 * pin + 1] = 1.0
         solve(pattern, factors, work.y_e)
         if 1.0 - alpha * work.y_e[2 * pin + 1] < 0.0:

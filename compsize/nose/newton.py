@@ -25,7 +25,7 @@ from compsize.flow.equations import (
     residual,
 )
 from compsize.flow.jit import kernel
-from compsize.flow.lu import solve, solve_transposed
+from compsize.flow.lu import clear, copy_into, solve, solve_transposed
 from compsize.flow.second import live_weights, pulled_back
 
 Floats = NDArray[np.float64]
@@ -90,15 +90,16 @@ def newton(pattern, case, state, factors, work, mode, node, target, reuse, tries
     """Bring the state to the wanted point; 0 done, 1 failed (the state is then worthless).
 
     ``node`` is the device of a CORNER, whose floating quantity must reach ``target``. ``reuse`` starts with
-    the factors at hand (made at a near point with the same segments); ``wide`` allows long damped steps.
+    the factors at hand (made at a near point with the same segments); ``wide`` allows long damped steps. All
+    flags are whole numbers: a literal would compile the whole function once more.
     """
     real, whole = work.real, work.whole
     pin, alpha = whole[PIN], real[ALPHA]
     n = state.v.size
-    fresh = reuse
+    fresh = reuse == 1
     previous = np.inf
     first = np.inf
-    stale = reuse
+    stale = reuse == 1
     whole[NEWTONS] += 1
     for turn in range(tries):
         lam = real[LAM]
@@ -118,13 +119,13 @@ def newton(pattern, case, state, factors, work, mode, node, target, reuse, tries
             return 1
         if turn == 0:
             first = err
-        elif err > 1e4 * max(first, 1e-2) and not wide:
+        elif err > 1e4 * max(first, 1e-2) and wide == 0:
             return 1
         poor = turn > 0 and err > 0.15 * previous
         if mode != FOLD and poor and not stale and err < 1e-8:
             real[WORST] = err
             return 0
-        if mode != FOLD and not wide and turn >= 6 and poor and not stale and err > 1e-3:
+        if mode != FOLD and wide == 0 and turn >= 6 and poor and not stale and err > 1e-3:
             return 1
         previous = err
         if mode == FOLD or not fresh or (stale and poor) or (not stale and err > 1e-5):
@@ -134,10 +135,10 @@ def newton(pattern, case, state, factors, work, mode, node, target, reuse, tries
                 return 1
             real[SIGN] = sign
             loading_column(case, state, whole[PIECE], work.load)
-            work.y_l[:] = work.load
+            copy_into(work.y_l, work.load)
             solve(pattern, factors, work.y_l)
             if alpha != 0.0:
-                work.y_e[:] = 0.0
+                clear(work.y_e)
                 work.y_e[2 * pin + 1] = 1.0
                 solve(pattern, factors, work.y_e)
             fresh = True
@@ -166,7 +167,7 @@ def newton(pattern, case, state, factors, work, mode, node, target, reuse, tries
             if (err < 1e-10 or floor) and abs(g) < 1e-9 * alpha:
                 real[WORST] = err
                 return 0
-            work.w[:] = 0.0
+            clear(work.w)
             work.w[k] = 1.0
             solve_transposed(pattern, factors, work.w)
             for i in range(2 * n):
@@ -202,13 +203,13 @@ def newton(pattern, case, state, factors, work, mode, node, target, reuse, tries
             work.step[2 * i] = step_t
             work.step[2 * i + 1] = step_v
             biggest = max(biggest, max(0.3 * abs(step_t), abs(step_v)))
-        limit = 0.25 if wide else 0.2
+        limit = 0.25 if wide == 1 else 0.2
         scale = 1.0
         if not np.isfinite(biggest):
             return 1
         if biggest > limit:
             scale = limit / biggest
-            if not wide and scale < 0.05:
+            if wide == 0 and scale < 0.05:
                 return 1
         for i in range(n):
             state.th[i] += scale * work.step[2 * i]

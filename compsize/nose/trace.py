@@ -12,7 +12,7 @@ import numpy as np
 
 from compsize.flow.equations import DEAD, TAP
 from compsize.flow.jit import kernel
-from compsize.flow.lu import solve
+from compsize.flow.lu import copy_into, solve
 from compsize.flow.second import live_weights, second_along
 from compsize.nose.limits import allowance, earliest, first_root, refactor, response, support_step
 from compsize.nose.newton import (
@@ -64,14 +64,14 @@ def choose_pin(case, state, work, slope, floor):  # type: ignore[no-untyped-def]
 
 @kernel
 def save(state, work):  # type: ignore[no-untyped-def]
-    work.th0[:] = state.th
-    work.v0[:] = state.v
+    copy_into(work.th0, state.th)
+    copy_into(work.v0, state.v)
 
 
 @kernel
 def restore(state, work, lam):  # type: ignore[no-untyped-def]
-    state.th[:] = work.th0
-    state.v[:] = work.v0
+    copy_into(state.th, work.th0)
+    copy_into(state.v, work.v0)
     work.real[LAM] = lam
 
 
@@ -81,7 +81,8 @@ def note(state, work, log):  # type: ignore[no-untyped-def]
     m = work.whole[LOGGED]
     if m < log.shape[0]:
         log[m, 0] = work.real[LAM]
-        log[m, 1:] = state.v
+        for i in range(state.v.size):
+            log[m, 1 + i] = state.v[i]
         work.whole[LOGGED] = m + 1
 
 
@@ -101,10 +102,12 @@ def trace(pattern, case, state, factors, work, top, cap, log):  # type: ignore[n
     stride = 0.25 * cap
     sgn = 0.0
     lam0 = real[LAM]
-    last = device = old = old_pin = -1
+    last = device = old = old_pin = np.int64(-1)
     old_alpha = s_try = 0.0
     idle = fails = 0
     pending = NOTHING
+    tries = np.int64(12)
+    narrow = np.int64(0)
     note(state, work, log)
     for _ in range(20000):
         sign = refactor(pattern, case, state, factors, work)
@@ -244,7 +247,8 @@ def trace(pattern, case, state, factors, work, top, cap, log):  # type: ignore[n
             real[LAM] = lam0 + s_try * (dlam + 0.5 * s_try * d2lam)
         start = real[LAM]
         for _ in range(0 if ok else 30):
-            if newton(pattern, case, state, factors, work, mode, device, target, mode != FOLD, 12, False) != 0:
+            reuse = np.int64(0 if mode == FOLD else 1)
+            if newton(pattern, case, state, factors, work, mode, device, target, reuse, tries, narrow) != 0:
                 break
             reach = 0.5 * abs(start - lam0)
             if mode != MAGNITUDE and (real[LAM] > start + reach + 0.02 or real[LAM] < lam0 - max(1e-7, reach)):
@@ -286,7 +290,7 @@ def trace(pattern, case, state, factors, work, top, cap, log):  # type: ignore[n
         if mode == CORNER:
             s = case.segptr[device] + state.seg[device]
             old = state.seg[device]
-            state.seg[device] += support_step(case, device, s, target == case.high[s])
+            state.seg[device] += support_step(case, device, s, np.int64(1 if target == case.high[s] else 0))
             pending = EVENT
             if pin < 0 or pin == device:
                 choose_pin(case, state, work, work.d1, 1e-9)
