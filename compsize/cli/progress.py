@@ -47,7 +47,8 @@ class ProgressLine:
     def __call__(self, stage: str, done: int, total: int | None) -> None:
         with self._lock:
             now = self._clock()
-            if stage != self._stage or done < self._done_before:
+            # The first of a stage may compile or prepare; the pace is measured from its end.
+            if stage != self._stage or done < self._done_before or (done > 0 and self._done_before == 0):
                 self._stage, self._stage_began, self._done_before = stage, now, done
             if now - self._said < (RENEW_SECONDS if self._terminal else PLAIN_SECONDS):
                 return

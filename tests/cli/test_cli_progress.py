@@ -48,16 +48,18 @@ def test_a_terminal_is_not_flooded() -> None:
     assert stream.getvalue().count("\r") == 1
 
 
-def test_time_left_is_estimated_from_the_stage() -> None:
-    """After 10 s for 25 of 100, 30 s are left; a stage that began late is measured from its own beginning."""
+def test_time_left_is_estimated_from_the_pace() -> None:
+    """25 cases in 10 s leave 30 s for 74 more, whatever stages before and the first case took."""
     stream, clock = Terminal(), Clock()
     line = ProgressLine(stream, clock)
     line("search", 0, None)
     clock.now += 500.0
     line("cases", 0, 100)
+    clock.now += 60.0
+    line("cases", 1, 100)
     clock.now += 10.0
-    line("cases", 25, 100)
-    assert stream.getvalue().endswith("\rcases: 25 of 100, about 30 s left\x1b[K")
+    line("cases", 26, 100)
+    assert stream.getvalue().endswith("\rcases: 26 of 100, about 30 s left\x1b[K")
 
 
 def test_no_estimate_without_a_total() -> None:
