@@ -9,10 +9,10 @@ import numpy as np
 
 from compsize.margin.cases import CaseSpec, bank_cases, case_margin, listed_cases, required_mw, steps_lost
 from compsize.margin.pool import run_all
-from compsize.network.cases import CaseModel, build_case
+from compsize.network.cases import Addition, CaseModel, build_case, vary
 from compsize.network.grid import Grid, build_grid
 from compsize.network.plans import Choice, additions, build_choices
-from compsize.nose.engine import Engine, Nose, Point
+from compsize.nose.engine import LEAP_NODES, Engine, Nose, Point
 from compsize.plan.records import CaseMargin
 from compsize.study.records import Study
 
@@ -28,6 +28,18 @@ class Bench:
     specs: tuple[CaseSpec, ...]
     base: Point | None
     """The intact network at base load with the existing steps in service; None: it has no solution."""
+    intact: CaseModel
+    """The intact network with the existing steps in service."""
+
+    def model(self, spec: CaseSpec, new: Sequence[int]) -> CaseModel:
+        """The case of ``spec`` with ``new`` steps in service, all on."""
+        changed = [(c, n) for c, n in zip(self.choices, new, strict=True) if n != 0]
+        if all(c.candidate.equipment.kind == "bank" for c, _ in changed):
+            shunts = [Addition(c.bus, b_pu=n * c.step_pu) for c, n in changed]
+            found = vary(self.grid, self.intact, spec.elements, shunts)
+            if found is not None:
+                return found
+        return build_case(self.grid, spec.elements, additions(self.choices, new))
 
 
 def prepare(study: Study) -> Bench:
@@ -43,7 +55,8 @@ def prepare(study: Study) -> Bench:
     if any(c.existing and c.candidate.equipment.kind != "bank" for c in choices):
         model = build_case(grid, (), additions(choices, [0] * len(choices)))
         point = operating_point(engine, model)
-    return Bench(study, grid, engine, choices, listed_cases(study), point)
+    intact = build_case(grid, (), additions(choices, [0] * len(choices)))
+    return Bench(study, grid, engine, choices, listed_cases(study), point, intact)
 
 
 def operating_point(engine: Engine, model: CaseModel) -> Point | None:
@@ -55,13 +68,25 @@ def operating_point(engine: Engine, model: CaseModel) -> Point | None:
     return None
 
 
-def evaluate(bench: Bench, spec: CaseSpec, new: Sequence[int]) -> tuple[CaseModel, Nose | None]:
-    """The nose of one case with ``new`` steps in service, all on, traced from the operating point."""
+def evaluate(
+    bench: Bench, spec: CaseSpec, new: Sequence[int], near: Nose | None = None
+) -> tuple[CaseModel, Nose | None]:
+    """The nose of one case with ``new`` steps in service, all on.
+
+    Traced from the operating point event by event; on large networks from the intact network's nose ``near``, or
+    by long steps, where these can be believed (:mod:`compsize.nose.leap`).
+    """
     steps = list(new)
     if spec.choice >= 0:
         steps[spec.choice] -= steps_lost(bench.study, bench.choices[spec.choice], steps[spec.choice])
-    model = build_case(bench.grid, spec.elements, additions(bench.choices, steps))
-    return model, bench.engine.nose(model, bench.base) if model.evaluable else None
+    model = bench.model(spec, steps)
+    if not model.evaluable:
+        return model, None
+    if near is not None and bench.grid.count >= LEAP_NODES:
+        nose = bench.engine.nose_near(model, near, careful=True)
+        if nose is not None:
+            return model, nose
+    return model, bench.engine.nose(model, bench.base, fast=bench.grid.count >= LEAP_NODES)
 
 
 def assess(
@@ -70,9 +95,10 @@ def assess(
     """Rows of all cases without new equipment; and how many noses and factorisations that took."""
     none = [0] * len(bench.choices)
     specs = (*bench.specs, *bank_cases(bench.study, bench.choices, none))
+    _, intact = evaluate(bench, specs[0], none)
 
     def one(spec: CaseSpec) -> tuple[CaseMargin, int, int]:
-        model, nose = evaluate(bench, spec, none)
+        model, nose = evaluate(bench, spec, none, intact)
         need = required_mw(bench.study, bench.grid, spec, model)
         row = case_margin(bench.grid, spec, model, nose, need)
         return row, 0 if nose is None else 1, 0 if nose is None else nose.factorisations

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterable, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -78,6 +78,28 @@ def _parts(grid: Grid, lost: set[int]) -> NDArray[np.int32] | None:
     graph = coo_matrix((np.ones(int(keep.sum())), (grid.frm[keep], grid.to[keep])), shape=(n, n))
     count, label = connected_components(graph, directed=False)
     return label if count > 1 else None
+
+
+def vary(grid: Grid, base: CaseModel, elements: Sequence[tuple[str, str]], shunts: Sequence[Addition]) -> CaseModel | None:
+    """The case that differs from ``base`` by lost branches and added susceptance only: new admittances, the rest shared.
+
+    None where more changes (a split, another kind of element, a moving tap changer, a device): then
+    :func:`build_case` makes it.
+    """
+    if grid.tap_branches.size or any(kind != "branch" for kind, _ in elements) or any(a.devices for a in shunts):
+        return None
+    lost = lost_numbers(grid, elements)["branch"]
+    if _parts(grid, lost) is not None:
+        return None
+    g, b = base.case.g, base.case.b.copy()
+    if lost:
+        g = g.copy()
+        for k in lost:
+            np.subtract.at(g, grid.places[k], grid.y_ends[k].real)
+            np.subtract.at(b, grid.places[k], grid.y_ends[k].imag)
+    for add in shunts:
+        b[grid.pattern.adiag[grid.node[add.bus]]] += add.b_pu
+    return replace(base, case=base.case._replace(g=g, b=b))
 
 
 def build_case(

@@ -12,8 +12,9 @@ from compsize.flow.equations import DEAD, TAP, State, new_state
 from compsize.flow.lu import Factors, new_factors
 from compsize.network.cases import CaseModel
 from compsize.network.grid import Grid
-from compsize.nose.limits import settle, step_back
-from compsize.nose.newton import BRANCH, CULPRIT, FACTORS, LAM, LOADING, LOGGED, PIECE, PIN, WORST, Work, new_work
+from compsize.nose.leap import leap, limited_doubt
+from compsize.nose.limits import refactor, settle, step_back
+from compsize.nose.newton import ALPHA, BRANCH, CULPRIT, DOUBT, FACTORS, LAM, LOADING, LOGGED, PIECE, PIN, WORST, Work, new_work
 from compsize.nose.trace import AT_FOLD, AT_LIMIT, NO_TURN, trace
 
 Floats = NDArray[np.float64]
@@ -21,6 +22,9 @@ Floats = NDArray[np.float64]
 FOLD, LIMIT, NONE, UNRESOLVED = "fold", "limit", "none", ""
 LONGEST_STEP = 0.05
 LIFT = 0.015
+# First, longest and shortest leap [pu of the pinned magnitude]; from so many nodes on, leaps cost less than events.
+LEAPS = (0.02, 0.08, 0.006)
+LEAP_NODES = 500
 # Where to look for a start when the base load has no solution: lighter load first, then heavier.
 LIGHTER = (-0.02, -0.05, -0.1, -0.2, -0.35, -0.5, -0.65, -0.8, -0.9, -0.97)
 HEAVIER = (0.05, 0.1, 0.2, 0.4, 0.7)
@@ -72,6 +76,7 @@ class Bench:
         self.factors: Factors = new_factors(grid.pattern)
         self.work: Work = new_work(grid.count)
         self.no_log = np.zeros((0, grid.count + 1))
+        self.seg = np.zeros(grid.count, dtype=np.int64)
 
 
 class Engine:
@@ -133,10 +138,19 @@ class Engine:
         done = settle(self.grid.pattern, model.case, bench.state, bench.factors, bench.work, LOADING, loading, 60)
         return bool(done == 0)
 
-    def nose(self, model: CaseModel, start: Point | None = None, points: int = 0, cap: float = LONGEST_STEP) -> Nose:
+    def nose(
+        self,
+        model: CaseModel,
+        start: Point | None = None,
+        points: int = 0,
+        cap: float = LONGEST_STEP,
+        fast: bool = False,
+    ) -> Nose:
         """The first nose on the branch from the operating point, traced event by event.
 
-        ``start`` is a near solved state (the intact network's); ``points`` asks for a log of so many points.
+        ``start`` is a near solved state (the intact network's); ``points`` asks for a log of so many points. With
+        ``fast`` long steps with many events each go ahead of the trace, as far as they can be believed
+        (:mod:`compsize.nose.leap`); ``traced`` of the result is then False.
         """
         bench = self._bench()
         bench.work.whole[:] = 0
@@ -148,6 +162,10 @@ class Engine:
                 base = self._point(bench)
                 break
         if base is not None:
+            if fast:
+                found = self._trace(bench, model, base, base, "", 0, cap, attempts=1, fast=True)
+                if found.kind:
+                    return found
             found = self._trace(bench, model, base, base, "", points, cap)
             if found.kind:
                 return found
@@ -183,7 +201,7 @@ class Engine:
             bench.no_log,
         )
 
-    def nose_near(self, model: CaseModel, near: Nose, lift: float = LIFT) -> Nose | None:
+    def nose_near(self, model: CaseModel, near: Nose, lift: float = LIFT, careful: bool = False) -> Nose | None:
         """The first nose beyond a point just before the nose ``near`` of a similar case.
 
         That point is the near nose with its fastest falling magnitude raised by ``lift``, solved anew with its
@@ -209,6 +227,12 @@ class Engine:
         at = float(bench.work.whole[PIECE])
         if not model.case.gbreak[int(at)] <= point.loading <= model.case.gbreak[int(at) + 1]:
             return None
+        if careful:
+            sign = refactor(self.grid.pattern, model.case, bench.state, bench.factors, bench.work)
+            doubt = limited_doubt(self.grid.pattern, model.case, bench.state, bench.factors, bench.work)
+            bench.work.real[DOUBT] = doubt
+            if sign != near.sign or not np.isfinite(doubt):
+                return None
         found = self._trace(bench, model, point, None, near.status, 0, LONGEST_STEP, traced=False, attempts=1)
         if not found.kind or found.sign != near.sign:
             return None
@@ -273,20 +297,28 @@ class Engine:
         cap: float,
         traced: bool = True,
         attempts: int = 3,
+        fast: bool = False,
     ) -> Nose:
+        outcome = -1
+        log = bench.no_log
         for attempt in (cap, 0.3 * cap, 0.05 * cap)[:attempts]:
             self._load(bench, model, start)
             bench.work.real[LAM] = start.loading
+            bench.work.real[ALPHA] = 0.0
+            bench.work.whole[PIN] = -1
             bench.work.whole[LOGGED] = 0
             bench.work.whole[PIECE] = int(np.searchsorted(model.case.gbreak, start.loading, side="right")) - 1
+            if fast:
+                traced = False
+                leap(self.grid.pattern, model.case, bench.state, bench.factors, bench.work, bench.seg, *LEAPS)
+                if not np.isfinite(bench.work.real[DOUBT]):
+                    break
             log = np.zeros((points, self.grid.count + 1)) if points else bench.no_log
             outcome = trace(
                 self.grid.pattern, model.case, bench.state, bench.factors, bench.work, self.top, attempt, log
             )
             if outcome in (AT_FOLD, AT_LIMIT, NO_TURN):
                 break
-        else:
-            outcome = -1
         kind = {AT_FOLD: FOLD, AT_LIMIT: LIMIT, NO_TURN: NONE}.get(outcome, UNRESOLVED)
         work = bench.work
         direction = work.d1.copy()

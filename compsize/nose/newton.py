@@ -33,7 +33,7 @@ Floats = NDArray[np.float64]
 LOADING, MAGNITUDE, CORNER, FOLD = 0, 1, 2, 3
 
 # Places in the array of real scalars.
-LAM, ALPHA, SIGN, WORST, CURVE, BRANCH = 0, 1, 2, 3, 4, 5
+LAM, ALPHA, SIGN, WORST, CURVE, BRANCH, DOUBT = 0, 1, 2, 3, 4, 5, 6
 # Places in the array of whole scalars.
 PIECE, PIN, FACTORED, FACTORS, SOLVES, TURNS, EVENTS, LOGGED, CULPRIT, NEWTONS = range(10)
 

@@ -90,15 +90,14 @@ def note(state, work, log):  # type: ignore[no-untyped-def]
 def trace(pattern, case, state, factors, work, top, cap, log):  # type: ignore[no-untyped-def]
     """Follow the curve from a settled state to its first nose or to the loading ``top``.
 
-    ``cap`` is the longest step in the pinned magnitude [pu]. On return the state is the nose, ``work.d1`` the
+    ``cap`` is the longest step in the pinned magnitude [pu]; the pin that ``work.whole`` holds is kept (-1: none
+    yet). On return the state is the nose, ``work.d1`` the
     direction there (loading direction before a limit-induced nose, null vector at a fold), ``work.w`` the left
     null vector (fold), ``work.whole[CULPRIT]`` the device of a limit-induced nose.
     """
     real, whole = work.real, work.whole
     n = state.v.size
     whole[CULPRIT] = -1
-    whole[PIN] = -1
-    real[ALPHA] = 0.0
     stride = 0.25 * cap
     sgn = 0.0
     lam0 = real[LAM]

@@ -12,8 +12,7 @@ from dataclasses import dataclass
 
 from compsize.margin.assess import Bench
 from compsize.margin.cases import CaseSpec, required_mw, tolerance_mw
-from compsize.network.cases import CaseModel, build_case
-from compsize.network.plans import additions
+from compsize.network.cases import Addition, CaseModel, vary
 from compsize.nose.engine import Nose
 
 Steps = tuple[int, ...]
@@ -44,7 +43,7 @@ class Noses:
         self._zero = (0,) * len(bench.choices)
         self.targets: list[Target] = []
         for spec in bench.specs:
-            model = build_case(bench.grid, spec.elements, additions(bench.choices, self._zero))
+            model = bench.model(spec, self._zero)
             need = required_mw(bench.study, bench.grid, spec, model)
             self.targets.append(Target(spec, need, tolerance_mw(model), model))
         self.margins: dict[tuple[int, Steps], float] = {}
@@ -64,41 +63,19 @@ class Noses:
             0 if choice.candidate.equipment.kind == "bank" else n
             for choice, n in zip(self.bench.choices, state, strict=True)
         )
-        key = (case, fixed)
-        base = self._models.get(key)
+        spec = self.targets[case].spec
+        base = self._models.get((case, fixed))
         if base is None:
-            spec = self.targets[case].spec
-            base = build_case(self.bench.grid, spec.elements, additions(self.bench.choices, fixed))
-            self._models[key] = base
+            base = self._models[case, fixed] = self.bench.model(spec, fixed)
         if fixed == state:
             return base
-        b = base.case.b.copy()
-        adiag, node = self.bench.grid.pattern.adiag, self.bench.grid.node
-        moved = False
-        for choice, n in zip(self.bench.choices, state, strict=True):
-            if n != 0 and choice.candidate.equipment.kind == "bank":
-                place = adiag[node[choice.bus]]
-                b[place] += n * choice.step_pu
-                moved = moved or place in self._tap_places(base)
-        if moved or base.case.taps.shape[0]:
-            spec = self.targets[case].spec
-            return build_case(self.bench.grid, spec.elements, additions(self.bench.choices, state))
-        parts = base.case._replace(b=b, g=base.case.g)
-        return CaseModel(
-            parts,
-            base.chains,
-            base.first_segment,
-            base.base_mw,
-            base.mw_per_loading,
-            base.status,
-            base.evaluable,
-            base.dead,
-            base.total_mw,
-        )
-
-    @staticmethod
-    def _tap_places(model: CaseModel) -> set[int]:
-        return set(model.case.taps[:, 4:8].ravel().tolist())
+        shunts = [
+            Addition(choice.bus, b_pu=n * choice.step_pu)
+            for choice, n, same in zip(self.bench.choices, state, fixed, strict=True)
+            if n != same
+        ]
+        found = vary(self.bench.grid, base, (), shunts)
+        return found if found is not None else self.bench.model(spec, state)
 
     def margin(self, case: int, state: Steps) -> float:
         """Margin [MW] of the case with all steps of ``state`` on; NaN where no nose could be located."""
