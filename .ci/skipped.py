@@ -15,7 +15,9 @@ from xml.etree import ElementTree
 
 REQUIRED = (
     "tests.cli",
+    "tests.nose",
     "tests.report",
+    "tests.sizing",
     "tests.study",
     "tests.test_borders",
     "tests.test_surface",
