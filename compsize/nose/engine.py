@@ -12,6 +12,7 @@ from compsize.flow.equations import DEAD, TAP, State, new_state
 from compsize.flow.lu import Factors, new_factors
 from compsize.network.cases import CaseModel
 from compsize.network.grid import Grid
+from compsize.nose.direct import direct
 from compsize.nose.leap import leap, limited_doubt
 from compsize.nose.limits import refactor, settle, step_back
 from compsize.nose.newton import ALPHA, BRANCH, CULPRIT, DOUBT, FACTORS, LAM, LOADING, LOGGED, PIECE, PIN, WORST, Work, new_work
@@ -66,6 +67,8 @@ class Nose:
     """Traced from the operating point (else from a point next to a near nose)."""
     log: Floats
     """[points, 1 + nodes]: loading and magnitudes along the way, if asked for."""
+    segments: int
+    """Number of segments of the case, by which a near case with the same devices is known."""
 
 
 class Bench:
@@ -199,6 +202,7 @@ class Engine:
             0.0,
             True,
             bench.no_log,
+            0,
         )
 
     def nose_near(self, model: CaseModel, near: Nose, lift: float = LIFT, careful: bool = False) -> Nose | None:
@@ -212,6 +216,10 @@ class Engine:
             return None
         bench = self._bench()
         bench.work.whole[:] = 0
+        if not careful:
+            found = self._direct(bench, model, near)
+            if found is not None:
+                return found
         self._load(bench, model, near.point)
         pin = self._fastest(model, near)
         if pin < 0:
@@ -238,6 +246,39 @@ class Engine:
             return None
         return found
 
+    def _direct(self, bench: Bench, model: CaseModel, near: Nose) -> Nose | None:
+        assert near.point is not None
+        state, work, case = bench.state, bench.work, model.case
+        if near.point.seg.size != state.seg.size or near.segments != case.hold.size:
+            return None
+        state.th[:], state.v[:], state.seg[:] = near.point.th, near.point.v, near.point.seg
+        work.d1[:] = near.direction
+        work.real[LAM] = near.loading
+        pieces = case.gbreak.size
+        work.whole[PIECE] = 0 if pieces == 2 else int(np.searchsorted(case.gbreak, near.loading, side="right")) - 1
+        outcome = direct(self.grid.pattern, case, state, bench.factors, work, near.culprit, near.sign)
+        if outcome not in (AT_FOLD, AT_LIMIT):
+            return None
+        direction = work.d1.copy()
+        if outcome == AT_FOLD:
+            # The pinned magnitude falls.
+            direction *= -1.0
+        return Nose(
+            FOLD if outcome == AT_FOLD else LIMIT,
+            float(work.real[LAM]),
+            self._point(bench),
+            None,
+            direction,
+            int(work.whole[CULPRIT]),
+            near.status,
+            int(work.whole[FACTORS]),
+            float(work.real[WORST]),
+            near.sign,
+            False,
+            bench.no_log,
+            case.hold.size,
+        )
+
     def beyond(self, model: CaseModel, nose: Nose, node: int, drop: float = 0.01) -> list[tuple[float, float]]:
         """Points (loading, magnitude of ``node``) past a nose, with falling voltage; for pictures only."""
         assert nose.point is not None
@@ -252,7 +293,7 @@ class Engine:
                     bench.state.seg[nose.culprit] = trial
                     break
         near = Nose(
-            nose.kind, nose.loading, self._point(bench), None, nose.direction, -1, "", 0, 0.0, nose.sign, True, nose.log
+            nose.kind, nose.loading, self._point(bench), None, nose.direction, -1, "", 0, 0.0, nose.sign, True, nose.log, 0
         )
         pin = self._fastest(model, near)
         if pin < 0:
@@ -337,5 +378,6 @@ class Engine:
             float(work.real[BRANCH]),
             traced,
             log[: int(work.whole[LOGGED])],
+            model.case.hold.size,
         )
 

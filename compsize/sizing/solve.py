@@ -18,6 +18,7 @@ from compsize.sizing.search import Search
 from compsize.sizing.walk import Walk, count_before, plans_before
 
 WALK_CAP = 400_000
+FEW_PLANS = 3_000
 Tell = Callable[[str, int, int | None], None]
 
 
@@ -85,7 +86,8 @@ def solve(bench: Bench, workers: int, time_limit: float | None, tell: Tell | Non
     greedy = search.greedy(clock.over)
     if greedy is not None:
         search.accept(greedy)
-    over = False
+    # Few cheaper plans are walked at once: the walk finds the answer and is the proof.
+    over = greedy is not None and count_before(problem, greedy, FEW_PLANS) <= FEW_PLANS and proof != "covers"
     while not over and not clock.over():
         over = search.step()
         say("search for the cheapest plan", search.master.solves, None)
@@ -136,7 +138,8 @@ def _prove(
         walked = max(walked, outcome.plans)
         if outcome.better is not None:
             search.accept(outcome.better)
-            continue
+            if not outcome.open_plans:
+                continue
         if not outcome.finished or outcome.open_plans:
             count = len(plans)
             break
@@ -146,7 +149,7 @@ def _prove(
         )
         if answer is None:
             sentence = f"All {len(plans)} plans that the candidates allow were walked; each fails a case or breaks a rule of the study."
-            return Solved("unreachable", "No plan of these candidates meets the requirement.", None, _reach(judge, problem),
+            return Solved("unreachable", "No plan of these candidates meets the requirement.", None, _reach(judge, problem, clock),
                           None, Proof("full", sentence, len(plans), parts), problem, noses, judge,
                           search.master.solves, walked, tuple(found.history))  # fmt: skip
         cost = problem.cost(answer)
@@ -160,14 +163,14 @@ def _prove(
     part = ProofPart("covers", len(search.master.covers), COVER_ASSUMPTION)
     rest = Proof("covers", "The bound rests on covers; the plans before the answer are too many to walk, or the walk was cut short.", count, (part,))
     if found.plan is None:
-        return Solved("unreachable", "No plan was found, and the covers leave none.", None, _reach(judge, problem), None, rest,
+        return Solved("unreachable", "No plan was found, and the covers leave none.", None, _reach(judge, problem, clock), None, rest,
                       problem, noses, judge, search.master.solves, walked, tuple(found.history))  # fmt: skip
     return Solved("feasible", "The plan meets every case; the proof that nothing is cheaper is incomplete.", found.plan,
                   found.plan, found.bound, rest, problem, noses, judge, search.master.solves, walked,
                   tuple(found.history))  # fmt: skip
 
 
-def _reach(judge: Judge, problem: Problem) -> Steps:
+def _reach(judge: Judge, problem: Problem, clock: Clock) -> Steps:
     """The plan with the best reachable worst shortfall that a climb from nothing finds, within the rules."""
     plan: Steps = tuple(0 for _ in problem.most)
 
@@ -179,7 +182,7 @@ def _reach(judge: Judge, problem: Problem) -> Steps:
         best: tuple[float, Steps] | None = None
         for k, most in enumerate(problem.most):
             for more in (1, most - plan[k]):
-                if more < 1 or plan[k] + more > most:
+                if more < 1 or plan[k] + more > most or clock.over():
                     continue
                 trial = (*plan[:k], plan[k] + more, *plan[k + 1 :])
                 if problem.broken(trial):

@@ -1,6 +1,7 @@
 """The full proof: every plan that comes before the answer fails a case whose nose is located.
 
-Plans are walked by their number of steps, so that all plans below one are done before it. A plan fails a
+Plans are walked in order of preference, cheapest first: all plans below one cost no more, so they are done
+before it, and the first that meets everything is the answer. A plan fails a
 case when the noses of *all* states of switched steps it allows fall short; of these, all but the plan's own
 were evaluated when the smaller plans were walked, or are evaluated then.
 """
@@ -14,6 +15,10 @@ from dataclasses import dataclass
 
 from compsize.sizing.judge import Judge
 from compsize.sizing.problem import COST_TOLERANCE, Problem, Steps
+
+
+RULE, FAILS, OPEN, MEETS = "breaks a rule", "fails", "open", "meets"
+CHUNK = 64
 
 
 @dataclass(frozen=True)
@@ -64,7 +69,7 @@ def count_before(problem: Problem, answer: Steps, cap: int) -> int:
 
 
 class Walk:
-    """Walks plans level by level; several threads share a level."""
+    """Walks plans by rank; several threads share a stretch of them."""
 
     def __init__(self, problem: Problem, judge: Judge, workers: int) -> None:
         self.problem = problem
@@ -80,36 +85,37 @@ class Walk:
         done: Callable[[int, int], None] | None = None,
     ) -> Walked:
         """Walk ``plans``; ends early when ``stop`` says so or a better plan turns up."""
-        levels: dict[int, list[Steps]] = {}
-        for plan in plans:
-            levels.setdefault(sum(plan), []).append(plan)
         finished = 0
         excluded = by_rule = 0
         unsure: list[Steps] = []
+        ranked = sorted(plans, key=self.problem.rank)
         with ThreadPoolExecutor(max_workers=max(1, self.workers)) as pool:
-            for level in sorted(levels):
-                for chunk in _chunks(levels[level], 64 * max(1, self.workers)):
-                    if stop():
-                        return Walked(finished, excluded, by_rule, None, tuple(unsure), False)
-                    verdicts = list(pool.map(self._verdict, chunk)) if self.workers > 1 else [self._verdict(p) for p in chunk]
-                    passed = [plan for plan, verdict in zip(chunk, verdicts, strict=True) if verdict == "meets"]
-                    excluded += verdicts.count("fails")
-                    by_rule += verdicts.count("rule")
-                    unsure.extend(plan for plan, verdict in zip(chunk, verdicts, strict=True) if verdict == "open")
-                    finished += len(chunk)
-                    if done is not None:
-                        done(finished, len(plans))
-                    if passed:
-                        best = passed[0]
-                        for plan in passed[1:]:
-                            if self.problem.better(plan, best):
-                                best = plan
-                        return Walked(finished, excluded, by_rule, best, tuple(unsure), False)
+            for chunk in _chunks(ranked, CHUNK * max(1, self.workers)):
+                if stop():
+                    return Walked(finished, excluded, by_rule, None, tuple(unsure), False)
+                if self.workers > 1:
+                    parts = list(pool.map(self._verdicts, _chunks(chunk, max(1, CHUNK // 4))))
+                    verdicts = [verdict for part in parts for verdict in part]
+                else:
+                    verdicts = self._verdicts(chunk)
+                for plan, verdict in zip(chunk, verdicts, strict=True):
+                    excluded += verdict == FAILS
+                    by_rule += verdict == RULE
+                    if verdict == OPEN:
+                        unsure.append(plan)
+                    finished += 1
+                    if verdict == MEETS:
+                        return Walked(finished, excluded, by_rule, plan, tuple(unsure), False)
+                if done is not None:
+                    done(finished, len(ranked))
         return Walked(finished, excluded, by_rule, None, tuple(unsure), True)
+
+    def _verdicts(self, plans: list[Steps]) -> list[str]:
+        return [self._verdict(plan) for plan in plans]
 
     def _verdict(self, plan: Steps) -> str:
         if self.problem.broken(plan):
-            return "rule"
+            return RULE
         noses = self.judge.noses
         checks = list(self.judge.checks(plan))
         first = [
@@ -132,8 +138,8 @@ class Walk:
                 unsure = True
             elif best < check.need - check.allowed:
                 self.killer[plan] = (check.case, check.bank)
-                return "fails"
-        return "open" if unsure else "meets"
+                return FAILS
+        return OPEN if unsure else MEETS
 
 
 def _chunks(items: list[Steps], size: int) -> Iterator[list[Steps]]:
