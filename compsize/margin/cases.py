@@ -54,11 +54,12 @@ def steps_lost(study: Study, choice: Choice, new: int) -> int:
     return 1 if choice.candidate.equipment.kind == "bank" else new + choice.existing
 
 
-def _base_of(grid: Grid, model: CaseModel, of: str) -> float:
-    """Positive MW of a requirement's base in one case."""
+def _base_of(grid: Grid, spec: CaseSpec, model: CaseModel, of: str) -> float:
+    """Positive MW of a requirement's base in one case, without what its outage loses or cuts off."""
     if of == "total":
         return model.total_mw
-    served = ~model.dead[grid.load_bus]
+    lost = {element for kind, element in spec.elements if kind == "load"}
+    served = ~model.dead[grid.load_bus] & ~np.array([name in lost for name in grid.tables.loads.load], dtype=bool)
     positive = np.maximum(grid.load_p, 0.0)
     if of.startswith("area:"):
         area = of[5:]
@@ -87,7 +88,7 @@ def required_mw(study: Study, grid: Grid, spec: CaseSpec, model: CaseModel) -> f
         if requirement.margin_mw is not None:
             needs.append(requirement.margin_mw)
         if requirement.margin_pct is not None:
-            needs.append(requirement.margin_pct / 100.0 * _base_of(grid, model, requirement.of))
+            needs.append(requirement.margin_pct / 100.0 * _base_of(grid, spec, model, requirement.of))
     return max(needs) if needs else None
 
 
