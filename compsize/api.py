@@ -7,19 +7,25 @@ import time
 from collections.abc import Callable, Sequence
 from importlib.metadata import version
 
+from compsize.errors import UsageError
 from compsize.margin.assess import Bench, assess, prepare
-from compsize.margin.pool import default_workers
 from compsize.margin.curve import nose_curve
+from compsize.margin.pool import default_workers
 from compsize.network.cases import build_case
 from compsize.network.plans import additions
 from compsize.plan.records import CaseMargin, Counts, MarginsResult, NoseCurve, Plan, SizeResult, Verification
 from compsize.report.basis import basis_of
-from compsize.sizing.solve import Solved, rows_after, runner_up, solve
+from compsize.sizing.given import GivenPlan, judged
+from compsize.sizing.rows import rows_after, runner_up
+from compsize.sizing.solve import Clock, Solved, sizing_of
 from compsize.study.records import Study
 from compsize.verify.plan import verify_plan
 
 Progress = Callable[[str, int, int | None], None]
 """Told what is going on: a stage in words, how much is done, and of how much (None: not known)."""
+
+
+PROOFS = ("auto", "full", "covers")
 
 
 def _case_progress(progress: Progress | None, stage: str) -> Callable[[int, int], None] | None:
@@ -40,19 +46,27 @@ def study_notes(study: Study, bench: Bench) -> tuple[str, ...]:
     return tuple(notes)
 
 
-def margins(study: Study, *, workers: int | None = None, progress: Progress | None = None) -> MarginsResult:
+def margins(
+    study: Study,
+    *,
+    workers: int | None = None,
+    time_limit: float | None = None,
+    progress: Progress | None = None,
+) -> MarginsResult:
     """Nose and margin of the intact network and of every listed outage, without new equipment.
 
     Args:
         study: a checked study, from :func:`compsize.read_study`.
         workers: threads; None uses the processors at hand. The answer does not depend on it.
+        time_limit: seconds; cases not begun by then are rows that say so. None: no limit.
         progress: called as cases finish.
 
     Returns:
         One row per case; a case that cannot be evaluated is a row with its status.
     """
     bench = prepare(study)
-    rows, noses, factorisations = assess(bench, workers or default_workers(), _case_progress(progress, "cases"))
+    tell = _case_progress(progress, "cases")
+    rows, noses, factorisations = assess(bench, workers or default_workers(), tell, Clock(time_limit).over)
     return MarginsResult(
         title=study.title,
         cases=rows,
@@ -70,6 +84,7 @@ def size(
     workers: int | None = None,
     time_limit: float | None = None,
     proof: str = "auto",
+    plan: GivenPlan | None = None,
     progress: Progress | None = None,
 ) -> SizeResult:
     """The least-cost plan that keeps every required margin, with the proof that nothing is cheaper.
@@ -79,25 +94,35 @@ def size(
         workers: threads; None uses the processors at hand. The answer does not depend on it.
         time_limit: seconds for the search and the proof; None: no limit.
         proof: what the bound shall rest on: ``auto``, ``full``, ``covers``.
+        plan: rows (site, equipment, new steps) of a plan to judge; the result then shows this plan, with what it
+            breaks (status ``unreachable``) or how far above the least cost it is.
         progress: called as the work goes on.
 
     Returns:
         A result with the same fields whatever the outcome; ``status`` says which it is.
+
+    Raises:
+        UsageError: ``plan`` names what is no candidate, or too many steps; an unknown ``proof``.
     """
+    if proof not in PROOFS:
+        raise UsageError(f"unknown proof {proof!r}; valid are {', '.join(PROOFS)}")
     started = time.monotonic()
     bench = prepare(study)
     threads = workers or default_workers()
-    solved = solve(bench, threads, time_limit, progress, proof)
+    clock = Clock(time_limit)
+    solved = sizing_of(bench, threads, time_limit, progress, proof).run()
+    if plan is not None:
+        solved = judged(bench, solved, plan, threads, clock, progress)
     zero = tuple(0 for _ in bench.choices)
-    before, _ = rows_after(bench, solved, zero, threads)
-    after, _ = (before, {}) if solved.shown == zero else rows_after(bench, solved, solved.shown, threads)
-    plan = None if solved.steps is None else solved.problem.plan(solved.steps)
+    before = rows_after(bench, solved.judge, zero, threads)
+    after = before if solved.shown == zero else rows_after(bench, solved.judge, solved.shown, threads)
+    chosen = None if solved.steps is None else solved.problem.plan(solved.steps)
     cost = None if solved.steps is None else solved.problem.cost(solved.steps)
     verification = None
-    if plan is not None:
+    if chosen is not None:
         if progress is not None:
             progress("independent verification", 0, None)
-        verification = _verified(study, plan, after)
+        verification = _verified(study, chosen, after)
     curves = _curves(bench, solved, before, after)
     gap = None
     if cost is not None and solved.bound is not None:
@@ -106,9 +131,9 @@ def size(
     noses = solved.noses
     return SizeResult(
         title=study.title,
-        status=solved.status,  # type: ignore[arg-type]
+        status=solved.status,
         sentence=solved.sentence,
-        plan=plan,
+        plan=chosen,
         cost=cost,
         cost_bound=solved.bound,
         gap_pct=gap,
@@ -158,7 +183,8 @@ def _curves(
 
     known = {row.case: row for row in before}
     order = sorted((r for r in after if r.margin_mw is not None and r.case in known), key=lambda r: (spare(r), r.case))
-    chosen = list(dict.fromkeys([r.case for r in order[: most - 1]] + [r.case for r in sorted(known.values(), key=spare)[:1]]))
+    worst_before = min(known.values(), key=spare).case
+    chosen = list(dict.fromkeys([*(r.case for r in order[: most - 1]), worst_before]))
     if "intact" not in chosen:
         chosen.append("intact")
     specs = {t.spec.name: t.spec for t in solved.noses.targets}

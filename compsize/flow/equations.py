@@ -84,8 +84,8 @@ class State(NamedTuple):
 
 
 def new_state(count: int, taps: int) -> State:
-    zeros = [np.zeros(count) for _ in range(7)]
-    return State(zeros[0], zeros[1], np.full(count, -1, dtype=np.int64), *zeros[2:], np.zeros((taps, 4)))
+    th, v, qdev, e, f, p, q = (np.zeros(count) for _ in range(7))
+    return State(th, v, np.full(count, -1, dtype=np.int64), qdev, e, f, p, q, np.zeros((taps, 4)))
 
 
 @kernel

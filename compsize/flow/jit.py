@@ -56,10 +56,11 @@ def kernel(function: Function) -> Function:
     """Compile ``function`` without the interpreter, lock released, division by zero as in IEEE 754."""
     options: dict[str, Any] = {"nogil": True, "error_model": "numpy", "fastmath": {"contract"}}
     if CACHE_FOLDER is None:
-        return numba.njit(**options)(function)  # type: ignore[no-any-return]
-    before = numba.config.CACHE_DIR
-    numba.config.CACHE_DIR = str(CACHE_FOLDER)
+        return numba.njit(**options)(function)
+    config: Any = numba.config
+    before = config.CACHE_DIR
+    config.CACHE_DIR = str(CACHE_FOLDER)
     try:
-        return numba.njit(cache=True, **options)(function)  # type: ignore[no-any-return]
+        return numba.njit(cache=True, **options)(function)
     finally:
-        numba.config.CACHE_DIR = before
+        config.CACHE_DIR = before

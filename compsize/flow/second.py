@@ -14,7 +14,7 @@ from compsize.flow.lu import clear
 
 @kernel
 def tap_flows(case, state, k):  # type: ignore[no-untyped-def]
-    """Of tap branch ``k``: P and Q of the ratio-squared part and of the ratio part at 'from', of the ratio part at 'to'."""
+    """Of tap branch ``k``: P and Q at 'from' (ratio-squared part, ratio part) and at 'to' (ratio part)."""
     row = case.taps[k]
     val = case.tapval[k]
     f, o = row[1], row[2]

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -90,14 +90,25 @@ def evaluate(
 
 
 def assess(
-    bench: Bench, workers: int, done: Callable[[int, int], None] | None = None
+    bench: Bench,
+    workers: int,
+    done: Callable[[int, int], None] | None = None,
+    stop: Callable[[], bool] | None = None,
 ) -> tuple[tuple[CaseMargin, ...], int, int]:
-    """Rows of all cases without new equipment; and how many noses and factorisations that took."""
+    """Rows of all cases without new equipment; and how many noses and factorisations that took.
+
+    Cases not begun when ``stop`` says so are rows with that status.
+    """
     none = [0] * len(bench.choices)
     specs = (*bench.specs, *bank_cases(bench.study, bench.choices, none))
     _, intact = evaluate(bench, specs[0], none)
 
     def one(spec: CaseSpec) -> tuple[CaseMargin, int, int]:
+        if stop is not None and stop():
+            model = bench.model(spec, none)
+            need = required_mw(bench.study, bench.grid, spec, model)
+            row = case_margin(bench.grid, spec, model, None, need)
+            return replace(row, status="not evaluated: stopped by the time limit"), 0, 0
         model, nose = evaluate(bench, spec, none, intact)
         need = required_mw(bench.study, bench.grid, spec, model)
         row = case_margin(bench.grid, spec, model, nose, need)

@@ -80,8 +80,10 @@ def _parts(grid: Grid, lost: set[int]) -> NDArray[np.int32] | None:
     return label if count > 1 else None
 
 
-def vary(grid: Grid, base: CaseModel, elements: Sequence[tuple[str, str]], shunts: Sequence[Addition]) -> CaseModel | None:
-    """The case that differs from ``base`` by lost branches and added susceptance only: new admittances, the rest shared.
+def vary(
+    grid: Grid, base: CaseModel, elements: Sequence[tuple[str, str]], shunts: Sequence[Addition]
+) -> CaseModel | None:
+    """The case that differs from ``base`` by lost branches and added susceptance only; the rest is shared.
 
     None where more changes (a split, another kind of element, a moving tap changer, a device): then
     :func:`build_case` makes it.
@@ -102,9 +104,7 @@ def vary(grid: Grid, base: CaseModel, elements: Sequence[tuple[str, str]], shunt
     return replace(base, case=base.case._replace(g=g, b=b))
 
 
-def build_case(
-    grid: Grid, elements: Sequence[tuple[str, str]] = (), additions: Sequence[Addition] = ()
-) -> CaseModel:
+def build_case(grid: Grid, elements: Sequence[tuple[str, str]] = (), additions: Sequence[Addition] = ()) -> CaseModel:
     """The case with ``elements`` (pairs kind, id) lost and ``additions`` in service."""
     tables = grid.tables
     base = tables.base_mva
@@ -169,16 +169,14 @@ def build_case(
     if evaluable and mw_per_loading <= 0.0:
         status, evaluable = "not evaluable: no load that grows is left", False
 
-    units = np.flatnonzero(unit_on)
-    p, p_max = grid.gen_p[units], grid.gen_pmax[units]
-    slack_at = int(np.flatnonzero(units == slack)[0])
-    share = shares(grid.growth.pickup, p, p_max, grid.gen_table[units], slack_at, in_service / base)
+    left = np.flatnonzero(unit_on)
+    p, p_max = grid.gen_p[left], grid.gen_pmax[left]
+    slack_at = int(np.flatnonzero(left == slack)[0])
+    share = shares(grid.growth.pickup, p, p_max, grid.gen_table[left], slack_at, in_service / base)
     gone_p = float(grid.gen_p[grid.gen_on & ~unit_on].sum())
-    gbreak, p0, p1 = pieces(
-        p, p_max, share, gone_p, mw_per_loading / base, grid.growth.pickup_limits, LOWEST_LOADING
-    )
+    gbreak, p0, p1 = pieces(p, p_max, share, gone_p, mw_per_loading / base, grid.growth.pickup_limits, LOWEST_LOADING)
     gen = np.zeros((p0.shape[0], grid.count, 2))
-    at = grid.node[grid.gen_bus[units]]
+    at = grid.node[grid.gen_bus[left]]
     for k in range(p0.shape[0]):
         np.add.at(gen[k, :, 0], at, p0[k])
         np.add.at(gen[k, :, 1], at, p1[k])

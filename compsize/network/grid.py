@@ -225,7 +225,7 @@ def build_grid(tables: NetworkTables, growth: Growth) -> Grid:
         branch_of={br.branch[r]: k for k, r in enumerate(row)},
         frm=frm,
         to=to,
-        y_series=1.0 / (br.r_pu[row] + 1j * br.x_pu[row]),
+        y_series=np.asarray(1.0 / (br.r_pu[row] + 1j * br.x_pu[row]), dtype=np.complex128),
         y_ends=ends,
         places=places,
         tap_branches=moving,

@@ -15,7 +15,21 @@ from compsize.network.grid import Grid
 from compsize.nose.direct import direct
 from compsize.nose.leap import leap, limited_doubt
 from compsize.nose.limits import refactor, settle, step_back
-from compsize.nose.newton import ALPHA, BRANCH, CULPRIT, DOUBT, FACTORS, LAM, LOADING, LOGGED, PIECE, PIN, WORST, Work, new_work
+from compsize.nose.newton import (
+    ALPHA,
+    BRANCH,
+    CULPRIT,
+    DOUBT,
+    FACTORS,
+    LAM,
+    LOADING,
+    LOGGED,
+    PIECE,
+    PIN,
+    WORST,
+    Work,
+    new_work,
+)
 from compsize.nose.trace import AT_FOLD, AT_LIMIT, NO_TURN, trace
 
 Floats = NDArray[np.float64]
@@ -95,7 +109,7 @@ class Engine:
         bench = getattr(self._local, "bench", None)
         if bench is None:
             bench = self._local.bench = Bench(self.grid)
-        return bench  # type: ignore[no-any-return]
+        return bench
 
     def flat(self, model: CaseModel) -> Point:
         """A start from the tables: their voltages where given, set-points held."""
@@ -157,7 +171,9 @@ class Engine:
         """
         bench = self._bench()
         bench.work.whole[:] = 0
-        starts = [start, self.flat(model), self.level(model)] if start is not None else [self.flat(model), self.level(model)]
+        starts = (
+            [start, self.flat(model), self.level(model)] if start is not None else [self.flat(model), self.level(model)]
+        )
         base: Point | None = None
         for candidate in starts:
             self._load(bench, model, candidate)
@@ -293,7 +309,19 @@ class Engine:
                     bench.state.seg[nose.culprit] = trial
                     break
         near = Nose(
-            nose.kind, nose.loading, self._point(bench), None, nose.direction, -1, "", 0, 0.0, nose.sign, True, nose.log, 0
+            nose.kind,
+            nose.loading,
+            self._point(bench),
+            None,
+            nose.direction,
+            -1,
+            "",
+            0,
+            0.0,
+            nose.sign,
+            True,
+            nose.log,
+            0,
         )
         pin = self._fastest(model, near)
         if pin < 0:
@@ -380,4 +408,3 @@ class Engine:
             log[: int(work.whole[LOGGED])],
             model.case.hold.size,
         )
-

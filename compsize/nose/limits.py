@@ -26,12 +26,10 @@ LIMIT_TOLERANCE = 1e-9
 
 @kernel
 def support_step(case, i, s, above):  # type: ignore[no-untyped-def]
-    """Change of segment (+1 more support, -1 less) when the floating quantity leaves its range above (1) or below (0)."""
+    """Change of segment (+1: more support) when the floating quantity leaves its range above (1) or below (0)."""
     k = case.tapof[i]
-    if case.hold[s]:
-        up = above == 1 if k < 0 or case.tapval[k, 5] > 0.0 else above == 0
-    else:
-        up = above == 0
+    rises = case.hold[s] == 1 and (k < 0 or case.tapval[k, 5] > 0.0)
+    up = above == 1 if rises else above == 0
     return 1 if up else -1
 
 

@@ -59,8 +59,15 @@ class Work(NamedTuple):
 
 
 def new_work(count: int) -> Work:
-    vectors = [np.zeros(2 * count) for _ in range(11)]
-    return Work(*vectors, np.zeros(count), np.zeros(count), np.zeros(16), np.zeros(16, dtype=np.int64))
+    names = ("res", "load", "y_f", "y_l", "y_e", "w", "grad", "d1", "d2", "sec", "step")
+    vectors = {name: np.zeros(2 * count) for name in names}
+    return Work(
+        **vectors,
+        th0=np.zeros(count),
+        v0=np.zeros(count),
+        real=np.zeros(16),
+        whole=np.zeros(16, dtype=np.int64),
+    )
 
 
 @kernel

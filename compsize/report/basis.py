@@ -7,7 +7,7 @@ from compsize.study.records import Requirement, Study
 
 def _pickup(study: Study) -> str:
     words = {
-        "proportional": "each unit but the slack adds its share of today's output; the slack takes the remainder and the losses",
+        "proportional": "each unit but the slack by its output today; the slack takes the remainder and the losses",
         "slack": "the slack unit takes all added load and losses",
         "headroom": "units share the added load by their headroom; the slack takes the losses",
         "table": "units share the added load as the pickup column says; the slack takes the losses",
@@ -42,5 +42,8 @@ def basis_of(study: Study) -> tuple[tuple[str, str], ...]:
         ("Tap changers", growth.taps),
         ("Load model", "mixed constant power, current and impedance as tabled" if mixed else "constant power"),
         ("Requirement", "; ".join(requirement_words(r) for r in study.requirements)),
-        ("Cases", f"intact and {len(events)} listed outages; loss of installed equipment: {study.contingencies.bank_outage}"),
+        (
+            "Cases",
+            f"intact and {len(events)} listed outages; loss of installed equipment: {study.contingencies.bank_outage}",
+        ),
     )

@@ -61,6 +61,12 @@ class Judge:
         found.sort(key=lambda c: -self.kills.get((c.case, c.bank), 0))
         return iter(found)
 
+    def case_name(self, check: Check) -> str:
+        """The name of the case as the tables show it."""
+        if check.bank >= 0:
+            return f"bank:{self.choices[check.bank].name}"
+        return self.noses.targets[check.case].spec.name
+
     def passes(self, check: Check) -> bool:
         value, _ = self.noses.climbed(check.case, check.state, check.need - check.allowed)
         return value >= check.need - check.allowed
@@ -100,7 +106,7 @@ class Judge:
                 if self.passes(Check(check.case, state, check.need, check.allowed, check.bank)):
                     if middle == low + 1:
                         break
-                    high = middle - 1 if middle == high else middle - 1
+                    high = middle - 1
                 else:
                     low = middle
             at[k] = low

@@ -41,6 +41,9 @@ class Master:
         self._sites = count
         self._size = count + len(problem.sites)
         self._rows: list[tuple[dict[int, float], float, float]] = []
+        self._least = np.zeros(self._size)
+        for k, n in enumerate(problem.least):
+            self._least[self._offset[k] : self._offset[k] + n] = 1.0
         self._build()
 
     def _z(self, choice: int, step: int) -> int:
@@ -105,7 +108,8 @@ class Master:
         cost = self._costs()
         scale = max(float(np.abs(cost).max(initial=0.0)), 1e-12)
         # Ties: fewer sites, then fewer steps, earlier candidates first; far below any cost difference.
-        nudge = np.concatenate([1e-8 * (1.0 + 1e-3 * np.arange(self._steps) / max(self._steps, 1)), np.full(len(p.sites), 1e-6)])
+        order = np.arange(self._steps) / max(self._steps, 1)
+        nudge = np.concatenate([1e-8 * (1.0 + 1e-3 * order), np.full(len(p.sites), 1e-6)])
         data, rows, cols, low, high = [], [], [], [], []
         for r, (row, lo, hi) in enumerate(self._rows):
             for j, x in row.items():
@@ -120,8 +124,8 @@ class Master:
         outcome = milp(
             cost / scale + nudge,
             constraints=LinearConstraint(matrix, low, high) if self._rows else None,
-            integrality=np.ones(self._size),
-            bounds=Bounds(0.0, 1.0),
+            integrality=np.ones(self._size, dtype=np.int64),
+            bounds=Bounds(self._least, 1.0),
             options={"mip_rel_gap": 0.0},
         )
         if outcome.status == 2:

@@ -134,9 +134,7 @@ class Noses:
 
     def below(self, state: Steps) -> list[Steps]:
         """States with one switched step fewer."""
-        return [
-            (*state[:k], n - 1, *state[k + 1 :]) for k, n in enumerate(state) if n > 0 and self.switched[k]
-        ]
+        return [(*state[:k], n - 1, *state[k + 1 :]) for k, n in enumerate(state) if n > 0 and self.switched[k]]
 
     def best(self, case: int, state: Steps) -> float:
         """Best margin over all states of switched steps up to ``state``; NaN if any of them is unresolved.
@@ -182,4 +180,3 @@ class Noses:
 
     def kept_nose(self, case: int, state: Steps) -> Nose | None:
         return self._near.get((case, state))
-

@@ -21,6 +21,8 @@ class Problem:
     limits: Limits
     most: Steps
     """Largest number of new steps per choice."""
+    least: Steps
+    """Smallest number of new steps per choice: 0, or what a given plan already has."""
     first_cost: tuple[float, ...]
     """Cost that comes with the first new step of a choice, without the site."""
     step_cost: tuple[float, ...]
@@ -120,6 +122,7 @@ def build_problem(choices: tuple[Choice, ...], limits: Limits) -> Problem:
         choices=choices,
         limits=limits,
         most=tuple(c.most_new for c in choices),
+        least=tuple(0 for _ in choices),
         first_cost=first,
         step_cost=tuple(c.candidate.equipment.cost_per_step for c in choices),
         sites=sites,

@@ -51,9 +51,9 @@ class Search:
         self.found.history.append((self.judge.noses.count, cost, self.found.bound))
 
     def greedy(self, stop: Callable[[], bool]) -> Steps | None:
-        """Add the step that mends most of the worst case per cost until all is met, then take off what is not needed."""
+        """Add the step that mends most of the worst case per cost until all is met, then take off the idle."""
         problem, judge = self.problem, self.judge
-        plan: Steps = tuple(0 for _ in problem.most)
+        plan: Steps = problem.least
         while not stop():
             failures = judge.first_failures(plan, 1)
             if not failures:
@@ -91,7 +91,7 @@ class Search:
                 key=lambda k: problem.cost((*plan[:k], max(plan[k] - 1, 0), *plan[k + 1 :])),
             )
             for k in savings:
-                if plan[k] == 0:
+                if plan[k] == problem.least[k]:
                     continue
                 trial = (*plan[:k], plan[k] - 1, *plan[k + 1 :])
                 if not judge.first_failures(trial, 1):
@@ -124,9 +124,7 @@ class Search:
     def _orders(self, check: Check) -> list[list[int]]:
         """Several orders of raising, so that the covers differ: as listed, reversed, cheap first, dear first."""
         count = len(self.problem.most)
-        unit = [
-            self.problem.step_cost[k] / max(self.problem.choices[k].step_pu, 1e-12) for k in range(count)
-        ]
+        unit = [self.problem.step_cost[k] / max(self.problem.choices[k].step_pu, 1e-12) for k in range(count)]
         cheap = sorted(range(count), key=lambda k: unit[k])
         spread = sorted(range(count), key=lambda k: (k * 7 + check.case * 3 + len(self.master.covers)) % max(count, 1))
         return [list(range(count)), list(range(count - 1, -1, -1)), cheap, spread][:RAISINGS]

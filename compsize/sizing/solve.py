@@ -1,4 +1,4 @@
-"""The whole sizing run: prepare, search, prove, and hand over names and MW."""
+"""The whole sizing run: a good plan, a bound, and the proof."""
 
 from __future__ import annotations
 
@@ -7,26 +7,33 @@ from collections.abc import Callable
 from dataclasses import dataclass
 
 from compsize.margin.assess import Bench
-from compsize.margin.cases import CaseSpec, bank_cases, case_margin
 from compsize.margin.pool import run_all
-from compsize.nose.engine import Nose
-from compsize.plan.records import CaseMargin, Proof, ProofPart, RunnerUp
+from compsize.plan.records import Proof, ProofPart, Status
 from compsize.sizing.judge import Judge
 from compsize.sizing.noses import Noses, Steps
 from compsize.sizing.problem import Problem, build_problem
 from compsize.sizing.search import Search
-from compsize.sizing.walk import Walk, count_before, plans_before
+from compsize.sizing.walk import Walk, Walked, count_before, plans_before
 
 WALK_CAP = 400_000
 FEW_PLANS = 3_000
 Tell = Callable[[str, int, int | None], None]
 
+NOTHING_TO_BUILD = "Every case already keeps its margin; nothing needs to be built."
+NOTHING_CHEAPER = "Every case already keeps its margin, and no plan costs less than building nothing."
+LEAST_COST = "The plan meets every case at least cost; every cheaper plan was shown to fail."
+NO_PLAN = "No plan of these candidates meets the requirement."
+UNFINISHED = "The bound rests on covers; the plans before the answer are too many to walk, or the walk was cut short."
+COVER_ASSUMPTION = "the margin of a case does not rise and fall again inside a box of plans that a cover closes"
+WALK_ASSUMPTION = "none beyond the located noses"
+RULE_ASSUMPTION = "none: they break a rule of the study"
+
 
 @dataclass(frozen=True, eq=False)
 class Solved:
-    """Outcome of the search in steps; ``reports.py`` turns it into a result."""
+    """Outcome of the search in steps; :mod:`compsize.sizing.rows` turns it into tables."""
 
-    status: str
+    status: Status
     sentence: str
     steps: Steps | None
     """The chosen plan; None without one."""
@@ -52,210 +59,166 @@ class Clock:
         return self._end is not None and time.monotonic() >= self._end
 
 
-def solve(bench: Bench, workers: int, time_limit: float | None, tell: Tell | None = None, proof: str = "auto") -> Solved:
-    """Least-cost plan of a study with its proof, or the reason why there is none."""
-    clock = Clock(time_limit)
-    problem = build_problem(bench.choices, bench.study.limits)
-    noses = Noses(bench)
-    judge = Judge(noses)
-    zero: Steps = tuple(0 for _ in problem.most)
-    say: Tell = tell or (lambda stage, done, total: None)
+class Sizing:
+    """One run over one problem: the cases as they are, a good plan, covers where many plans are cheaper, the walk."""
 
-    say("cases without new equipment", 0, len(noses.targets))
-    todo = [c for c, t in enumerate(noses.targets) if t.model.evaluable]
-    run_all(lambda c: noses.margin(c, zero), todo, workers, lambda k: say("cases without new equipment", k, len(todo)))
-    for check in sorted(judge.checks(zero), key=lambda c: noses.margin(c.case, c.state) - c.need):
-        judge.kills[check.case, check.bank] = len(noses.targets) - len(judge.kills)
-    impossible = [t.spec.name for t in noses.targets if t.need is not None and not t.model.evaluable]
-    if impossible:
-        names = ", ".join(impossible[:5])
+    def __init__(
+        self, problem: Problem, judge: Judge, workers: int, clock: Clock, say: Tell | None = None, means: str = "auto"
+    ) -> None:
+        self.problem = problem
+        self.judge = judge
+        self.noses = judge.noses
+        self.workers = workers
+        self.clock = clock
+        self.say: Tell = say or (lambda stage, done, total: None)
+        self.means = means
+        self.search = Search(problem, judge)
+        self.walked = 0
+
+    def _solved(
+        self, status: Status, sentence: str, steps: Steps | None, shown: Steps, bound: float | None, proof: Proof
+    ) -> Solved:
         return Solved(
-            "unreachable",
-            f"No plan can meet the requirement: {names} cannot be evaluated, which counts as not met.",
-            None, zero, None, Proof("full", "A case that cannot be evaluated is not met by any plan.", 0),
-            problem, noses, judge, 0, 0, (),
-        )  # fmt: skip
+            status=status,
+            sentence=sentence,
+            steps=steps,
+            shown=shown,
+            bound=bound,
+            proof=proof,
+            problem=self.problem,
+            noses=self.noses,
+            judge=self.judge,
+            masters=self.search.master.solves,
+            walked=self.walked,
+            history=tuple(self.search.found.history),
+        )
 
-    search = Search(problem, judge)
-    if not judge.first_failures(zero, 1) and not problem.broken(zero):
-        search.accept(zero)
-        search.found.bound = 0.0
-        proof_zero = Proof("full", "Nothing needs to be built: every case already keeps its margin, and no plan costs less than nothing.", 0)
-        return Solved("optimal", "Every case already keeps its margin; nothing needs to be built.", zero, zero, 0.0,
-                      proof_zero, problem, noses, judge, 0, 0, tuple(search.found.history))  # fmt: skip
-    greedy = search.greedy(clock.over)
-    if greedy is not None:
-        search.accept(greedy)
-    # Few cheaper plans are walked at once: the walk finds the answer and is the proof.
-    over = greedy is not None and count_before(problem, greedy, FEW_PLANS) <= FEW_PLANS and proof != "covers"
-    while not over and not clock.over():
-        over = search.step()
-        say("search for the cheapest plan", search.master.solves, None)
-    if not over:
-        return _stopped(search, problem, noses, judge, zero)
-    return _prove(search, problem, noses, judge, workers, clock, say, proof)
+    def run(self) -> Solved:
+        """The least-cost plan with its proof, or the reason why there is none."""
+        problem, judge, found = self.problem, self.judge, self.search.found
+        start = problem.least
+        self._cases_as_they_are(start)
+        impossible = [t.spec.name for t in self.noses.targets if t.need is not None and not t.model.evaluable]
+        if impossible:
+            sentence = f"{', '.join(impossible[:5])} cannot be evaluated, which counts as not met by any plan."
+            return self._solved("unreachable", sentence, None, start, None, Proof("full", sentence, 0))
+        if not problem.broken(start) and not judge.first_failures(start, 1):
+            self.search.accept(start)
+            found.bound = problem.cost(start)
+            return self._solved(
+                "optimal", NOTHING_TO_BUILD, start, start, found.bound, Proof("full", NOTHING_CHEAPER, 0)
+            )
+        greedy = self.search.greedy(self.clock.over)
+        if greedy is not None:
+            self.search.accept(greedy)
+        # Few cheaper plans are walked at once: the walk finds the answer and is the proof.
+        few = greedy is not None and count_before(problem, greedy, FEW_PLANS) <= FEW_PLANS and self.means != "covers"
+        done = few
+        while not done and not self.clock.over():
+            done = self.search.step()
+            self.say("search for the cheapest plan", self.search.master.solves, None)
+        if not done:
+            return self._stopped()
+        return self._prove()
 
+    def _cases_as_they_are(self, start: Steps) -> None:
+        stage = "cases without new equipment"
+        noses, judge = self.noses, self.judge
+        todo = [c for c, t in enumerate(noses.targets) if t.model.evaluable]
+        self.say(stage, 0, len(todo))
+        run_all(lambda c: noses.margin(c, start), todo, self.workers, lambda k: self.say(stage, k, len(todo)))
+        for check in sorted(judge.checks(start), key=lambda c: noses.margin(c.case, c.state) - c.need):
+            judge.kills[check.case, check.bank] = len(noses.targets) - len(judge.kills)
 
-def _stopped(search: Search, problem: Problem, noses: Noses, judge: Judge, zero: Steps) -> Solved:
-    found = search.found
-    part = ProofPart("covers", len(search.master.covers), COVER_ASSUMPTION)
-    proof = Proof("covers", "Stopped by the time limit; the bound rests on covers.", None, (part,))
-    if found.plan is None:
-        return Solved("limit", "Stopped by the time limit before a plan was found.", None, zero, found.bound, proof,
-                      problem, noses, judge, search.master.solves, 0, tuple(found.history))  # fmt: skip
-    return Solved("feasible", "Stopped by the time limit: the plan meets everything, but a cheaper one may exist.",
-                  found.plan, found.plan, found.bound, proof, problem, noses, judge, search.master.solves, 0,
-                  tuple(found.history))  # fmt: skip
+    def _covers(self, sentence: str, count: int | None = None) -> Proof:
+        part = ProofPart("covers", len(self.search.master.covers), COVER_ASSUMPTION)
+        return Proof("covers", sentence, count, (part,))
 
+    def _stopped(self) -> Solved:
+        found = self.search.found
+        proof = self._covers("Stopped by the time limit; the bound rests on covers.")
+        if found.plan is None:
+            sentence = "Stopped by the time limit before a plan was found."
+            return self._solved("limit", sentence, None, self.problem.least, found.bound, proof)
+        sentence = "Stopped by the time limit: the plan meets everything, but a cheaper one may exist."
+        return self._solved("feasible", sentence, found.plan, found.plan, found.bound, proof)
 
-COVER_ASSUMPTION = "the margin of a case does not rise and fall again inside a box of plans that a cover closes"
-WALK_ASSUMPTION = "none beyond the located noses"
-RULE_ASSUMPTION = "none: they break a rule of the study"
-
-
-def _prove(
-    search: Search,
-    problem: Problem,
-    noses: Noses,
-    judge: Judge,
-    workers: int,
-    clock: Clock,
-    say: Tell,
-    proof: str,
-) -> Solved:
-    """Walk every plan before the answer; a better one found on the way becomes the answer."""
-    found = search.found
-    walk = Walk(problem, judge, workers)
-    walked = 0
-    while True:
-        answer = found.plan
-        cap = WALK_CAP if proof != "covers" else -1
-        plans = plans_before(problem, answer, cap)
-        if plans is None:
-            count = None if cap < 0 or answer is None else count_before(problem, answer, cap)
-            break
-        outcome = walk.run(plans, answer, clock.over, lambda k, n: say("proof: cheaper plans", k, n))
-        walked = max(walked, outcome.plans)
-        if outcome.better is not None:
-            search.accept(outcome.better)
-            if not outcome.open_plans:
-                continue
-        if not outcome.finished or outcome.open_plans:
+    def _prove(self) -> Solved:
+        """Walk every plan before the answer; a better one found on the way becomes the answer."""
+        problem, found = self.problem, self.search.found
+        walk = Walk(problem, self.judge, self.workers)
+        count: int | None = None
+        cap = WALK_CAP if self.means != "covers" else -1
+        while (plans := plans_before(problem, found.plan, cap)) is not None:
+            outcome = walk.run(plans, found.plan, self.clock.over, lambda k, n: self.say("proof: cheaper plans", k, n))
+            self.walked = max(self.walked, outcome.plans)
             count = len(plans)
-            break
+            if outcome.better is not None:
+                self.search.accept(outcome.better)
+                if not outcome.open_plans:
+                    continue
+                break
+            if not outcome.finished or outcome.open_plans:
+                break
+            return self._proved(outcome, len(plans))
+        rest = self._covers(UNFINISHED, count)
+        if found.plan is None:
+            if self.clock.over():
+                sentence = "Stopped by the time limit before a plan was found."
+                return self._solved("limit", sentence, None, problem.least, found.bound, rest)
+            sentence = "No plan was found, and the covers leave none."
+            return self._solved("unreachable", sentence, None, self._reach(), None, rest)
+        sentence = "The plan meets every case; the proof that nothing is cheaper is incomplete."
+        return self._solved(
+            "feasible", sentence, found.plan, found.plan, min(found.bound, problem.cost(found.plan)), rest
+        )
+
+    def _proved(self, outcome: Walked, count: int) -> Solved:
         parts = (
             ProofPart("walk", outcome.excluded, WALK_ASSUMPTION),
             ProofPart("rules", outcome.by_rule, RULE_ASSUMPTION),
         )
+        answer = self.search.found.plan
         if answer is None:
-            sentence = f"All {len(plans)} plans that the candidates allow were walked; each fails a case or breaks a rule of the study."
-            return Solved("unreachable", "No plan of these candidates meets the requirement.", None, _reach(judge, problem, clock),
-                          None, Proof("full", sentence, len(plans), parts), problem, noses, judge,
-                          search.master.solves, walked, tuple(found.history))  # fmt: skip
-        cost = problem.cost(answer)
+            sentence = f"All {count} plans of the candidates were walked: each fails a case or breaks a rule."
+            proof = Proof("full", sentence, count, parts)
+            return self._solved("unreachable", NO_PLAN, None, self._reach(), None, proof)
         sentence = (
-            f"All {len(plans)} plans that come before this one (cheaper, or equal in cost with fewer sites or steps) were "
+            f"All {count} plans that come before this one (cheaper, or equal in cost with fewer sites or steps) were "
             "walked; each fails a case whose nose was located, or breaks a rule of the study."
         )
-        return Solved("optimal", "The plan meets every case at least cost; every cheaper plan was shown to fail.", answer,
-                      answer, cost, Proof("full", sentence, len(plans), parts), problem, noses, judge,
-                      search.master.solves, walked, tuple(found.history))  # fmt: skip
-    part = ProofPart("covers", len(search.master.covers), COVER_ASSUMPTION)
-    rest = Proof("covers", "The bound rests on covers; the plans before the answer are too many to walk, or the walk was cut short.", count, (part,))
-    if found.plan is None:
-        return Solved("unreachable", "No plan was found, and the covers leave none.", None, _reach(judge, problem, clock), None, rest,
-                      problem, noses, judge, search.master.solves, walked, tuple(found.history))  # fmt: skip
-    return Solved("feasible", "The plan meets every case; the proof that nothing is cheaper is incomplete.", found.plan,
-                  found.plan, found.bound, rest, problem, noses, judge, search.master.solves, walked,
-                  tuple(found.history))  # fmt: skip
+        proof = Proof("full", sentence, count, parts)
+        return self._solved("optimal", LEAST_COST, answer, answer, self.problem.cost(answer), proof)
+
+    def _reach(self) -> Steps:
+        """The plan with the smallest worst shortfall that a climb from nothing finds, within the rules."""
+        problem, judge = self.problem, self.judge
+        plan = problem.least
+
+        def worst(at: Steps) -> float:
+            return max((judge.shortfall(check) for check in judge.checks(at)), default=0.0)
+
+        value = worst(plan)
+        while True:
+            best: tuple[float, Steps] | None = None
+            for k, most in enumerate(problem.most):
+                for more in (1, most - plan[k]):
+                    if more < 1 or plan[k] + more > most or self.clock.over():
+                        continue
+                    trial = (*plan[:k], plan[k] + more, *plan[k + 1 :])
+                    if problem.broken(trial):
+                        continue
+                    there = worst(trial)
+                    if there < value - 1e-9 and (best is None or there < best[0]):
+                        best = (there, trial)
+            if best is None:
+                return plan
+            value, plan = best
 
 
-def _reach(judge: Judge, problem: Problem, clock: Clock) -> Steps:
-    """The plan with the best reachable worst shortfall that a climb from nothing finds, within the rules."""
-    plan: Steps = tuple(0 for _ in problem.most)
-
-    def worst(at: Steps) -> float:
-        return max((judge.shortfall(check) for check in judge.checks(at)), default=0.0)
-
-    value = worst(plan)
-    while True:
-        best: tuple[float, Steps] | None = None
-        for k, most in enumerate(problem.most):
-            for more in (1, most - plan[k]):
-                if more < 1 or plan[k] + more > most or clock.over():
-                    continue
-                trial = (*plan[:k], plan[k] + more, *plan[k + 1 :])
-                if problem.broken(trial):
-                    continue
-                there = worst(trial)
-                if there < value - 1e-9 and (best is None or there < best[0]):
-                    best = (there, trial)
-        if best is None:
-            return plan
-        value, plan = best
-
-
-def rows_after(bench: Bench, solved: Solved, steps: Steps, workers: int) -> tuple[tuple[CaseMargin, ...], dict[str, Nose]]:
-    """Every case with ``steps`` installed, traced from the operating point; and the noses by case."""
-    noses, judge = solved.noses, solved.judge
-    specs: list[tuple[CaseSpec, int, Steps, float | None, float]] = [
-        (t.spec, c, steps, t.need, t.allowed) for c, t in enumerate(noses.targets)
-    ]
-    for spec in bank_cases(bench.study, bench.choices, steps):
-        check = next((x for x in judge.checks(steps) if x.bank == spec.choice), None)
-        if check is not None:
-            specs.append((spec, 0, check.state, check.need, check.allowed))
-        else:
-            from compsize.margin.cases import steps_lost
-
-            lost = steps_lost(bench.study, bench.choices[spec.choice], steps[spec.choice])
-            state = tuple(n - (lost if k == spec.choice else 0) for k, n in enumerate(steps))
-            specs.append((spec, 0, state, None, noses.targets[0].allowed))
-
-    def one(item: tuple[CaseSpec, int, Steps, float | None, float]) -> tuple[CaseMargin, str, Nose | None]:
-        spec, case, state, need, allowed = item
-        target = noses.targets[case]
-        if not target.model.evaluable:
-            return case_margin(bench.grid, spec, target.model, None, need), spec.name, None
-        wanted = float("-inf") if need is None else need - allowed
-        margin, nose, model = noses.trace(case, state)
-        at = state
-        if not margin >= wanted:
-            _, at = noses.climbed(case, state, wanted)
-            if at != state:
-                _, nose, model = noses.trace(case, at)
-        off = " ".join(
-            f"{choice.name}:{a - b}"
-            for choice, a, b in zip(bench.choices, state, at, strict=True)
-            if a != b
-        )
-        return case_margin(bench.grid, spec, model, nose, need, off), spec.name, nose
-
-    outcomes = run_all(one, specs, workers)
-    return tuple(row for row, _, _ in outcomes), {name: nose for _, name, nose in outcomes if nose is not None}
-
-
-def runner_up(problem: Problem, plan: Steps, judge: Judge) -> tuple[RunnerUp, ...]:
-    """Plans with one step moved or taken off the answer, cheapest first, and what each breaks."""
-    found: list[RunnerUp] = []
-    for k, n in enumerate(plan):
-        if n == 0:
-            continue
-        for j in range(len(plan)):
-            if j == k or plan[j] >= problem.most[j]:
-                continue
-            trial = list(plan)
-            trial[k] -= 1
-            trial[j] += 1
-            steps = tuple(trial)
-            if problem.broken(steps):
-                continue
-            failures = judge.first_failures(steps, 1)
-            note = "meets every case, dearer"
-            if failures:
-                check = failures[0]
-                name = judge.noses.targets[check.case].spec.name if check.bank < 0 else f"bank:{judge.choices[check.bank].name}"
-                note = f"{name} falls {judge.shortfall(check) + check.allowed:.2f} MW short"
-            found.append(RunnerUp(problem.plan(steps), problem.cost(steps), not failures, note))
-    found.sort(key=lambda r: r.cost)
-    return tuple([r for r in found if r.meets][:3] + [r for r in found if not r.meets][:3])
+def sizing_of(
+    bench: Bench, workers: int, time_limit: float | None, tell: Tell | None = None, means: str = "auto"
+) -> Sizing:
+    """A run on the problem of a prepared study."""
+    problem = build_problem(bench.choices, bench.study.limits)
+    return Sizing(problem, Judge(Noses(bench)), workers, Clock(time_limit), tell, means)

@@ -16,7 +16,6 @@ from dataclasses import dataclass
 from compsize.sizing.judge import Judge
 from compsize.sizing.problem import COST_TOLERANCE, Problem, Steps
 
-
 RULE, FAILS, OPEN, MEETS = "breaks a rule", "fails", "open", "meets"
 CHUNK = 64
 
@@ -42,7 +41,7 @@ def plans_before(problem: Problem, answer: Steps | None, cap: int) -> list[Steps
     top = math.inf if answer is None else problem.cost(answer) * (1 + COST_TOLERANCE) + COST_TOLERANCE
     count = len(problem.most)
     found: list[Steps] = []
-    at = [0] * count
+    at = list(problem.least)
 
     def grow(k: int) -> bool:
         if k == count:
@@ -50,13 +49,13 @@ def plans_before(problem: Problem, answer: Steps | None, cap: int) -> list[Steps
             if answer is None or problem.better(plan, answer):
                 found.append(plan)
             return len(found) <= cap
-        for n in range(problem.most[k] + 1):
+        for n in range(problem.least[k], problem.most[k] + 1):
             at[k] = n
-            if problem.cost(at[: k + 1] + [0] * (count - k - 1)) > top:
+            if problem.cost((*at[: k + 1], *problem.least[k + 1 :])) > top:
                 break
             if not grow(k + 1):
                 return False
-        at[k] = 0
+        at[k] = problem.least[k]
         return True
 
     return found if grow(0) else None
