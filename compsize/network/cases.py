@@ -141,13 +141,13 @@ def build_case(grid: Grid, elements: Sequence[tuple[str, str]] = (), additions: 
             status, evaluable = "not evaluable: the lost part holds the slack unit", False
         dead = label != main
         gone = float(grid.load_p[load_on & dead[grid.load_bus]].sum())
-        units = int((unit_on & dead[grid.gen_bus]).sum())
+        gone_units = int((unit_on & dead[grid.gen_bus]).sum())
         if evaluable:
             names = [tables.buses.bus[k] for k in np.flatnonzero(dead)]
             shown = ", ".join(names[:4]) + (f" and {len(names) - 4} more" if len(names) > 4 else "")
             status = f"cut off and dropped: bus {shown} with {gone:g} MW of load"
-            if units:
-                status += f" and {units} unit{'s' if units > 1 else ''}"
+            if gone_units:
+                status += f" and {gone_units} unit{'s' if gone_units > 1 else ''}"
         load_on &= ~dead[grid.load_bus]
         unit_on &= ~dead[grid.gen_bus]
     if not unit_on.any():
