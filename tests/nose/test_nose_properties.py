@@ -138,7 +138,7 @@ def _agrees(net: NetworkTables, lost: Lost, taps: Literal["locked", "moving"]) -
 
 @pytest.mark.parametrize(("name", "lost"), CASES)
 def test_loading_grows_along_the_way(name: str, lost: Lost) -> None:
-    """From the operating point the loading never falls, the nose is the largest, and just beyond it nothing is solved."""
+    """From the operating point the loading never falls, the nose is the largest, and beyond it nothing is solved."""
     net = tables(name)
     case = find(net, everything(net), lost)
     engine = Engine(case.grid)

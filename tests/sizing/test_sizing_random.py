@@ -13,11 +13,12 @@ import pytest
 from sizing_studies import Enumeration, Steps, allowed, is_close, plan_of, study_of
 from verify_networks import network
 
+from compsize.api import size
 from compsize.margin.assess import Bench, prepare
 from compsize.margin.cases import steps_lost
 from compsize.network.cases import build_case
 from compsize.network.plans import additions
-from compsize.sizing.solve import Solved, solve
+from compsize.sizing.solve import Solved, sizing_of
 from compsize.study.records import Candidate, Equipment, Event, Limits, NetworkTables, Requirement, Study
 
 
@@ -157,9 +158,14 @@ def random_study(seed: int) -> tuple[Traced, list[dict[Steps, float]]]:
         return Traced(study, traced.bench), margins
 
 
-def sized(study: Study) -> Solved:
-    """The search and its proof."""
-    return solve(prepare(study), 1, None)
+def sized(study: Study, workers: int = 1) -> Solved:
+    """The search and its proof, without tables and verification, for the sake of time."""
+    return sizing_of(prepare(study), workers, None).run()
+
+
+def cost_of(solved: Solved) -> float:
+    assert solved.steps is not None
+    return solved.problem.cost(solved.steps)
 
 
 def compare(seed: int) -> str:
@@ -167,21 +173,18 @@ def compare(seed: int) -> str:
     traced, margins = random_study(seed)
     found = traced.least(margins)
     solved = sized(traced.study)
-    if solved.status == "feasible":
-        # An honest answer only where some nose could not be located (grossly over-compensated states).
-        assert any(not math.isfinite(margin) for table in margins for margin in table.values()), (seed, solved.sentence)
-        assert found is not None
-        assert solved.steps == found[1], (seed, solved.steps, found[1])
-        return solved.status
     if found is None:
         assert solved.status == "unreachable", (seed, solved.sentence)
         assert solved.steps is None
         return solved.status
     cost, steps = found
+    assert solved.steps == steps, (seed, solved.sentence)
+    assert is_close(cost_of(solved), cost)
+    if solved.status == "feasible":
+        # An honest answer only where some nose could not be located (grossly over-compensated states).
+        assert any(not math.isfinite(margin) for table in margins for margin in table.values()), (seed, solved.sentence)
+        return solved.status
     assert solved.status == "optimal", (seed, solved.sentence)
-    assert solved.steps is not None
-    assert is_close(solved.problem.cost(solved.steps), cost), (seed, solved.steps, steps)
-    assert solved.steps == steps, (seed, solved.steps, steps)
     assert solved.bound == pytest.approx(cost)
     assert solved.proof.kind == "full"
     return solved.status
@@ -191,6 +194,45 @@ def compare(seed: int) -> str:
 def test_random_studies(seed: int) -> None:
     """The search finds the plan that comes first of all plans, or that there is none."""
     compare(seed)
+
+
+@pytest.mark.xfail(
+    strict=True,
+    reason="a nose found beside a near one lies on another branch, and the walk rests on it without a trace",
+)
+@pytest.mark.parametrize("seed", [2385, 3244, 3334, 4347])
+def test_random_studies_with_several_branches(seed: int) -> None:
+    """The same where strong compensation gives a case several branches of solutions."""
+    compare(seed)
+
+
+def _near_noses(seed: int) -> None:
+    """Compare each nose found beside that of a state with one step fewer with the traced one."""
+    traced, margins = random_study(seed)
+    bench = traced.bench
+    for spec, table in zip(bench.specs, margins, strict=True):
+        models = {n: build_case(bench.grid, spec.elements, additions(bench.choices, n)) for n in table}
+        noses = {n: bench.engine.nose(model, bench.base) for n, model in models.items() if model.evaluable}
+        for state, nose in noses.items():
+            for k in range(len(state)):
+                near = noses.get((*state[:k], state[k] - 1, *state[k + 1 :]))
+                found = None if near is None or not near.kind else bench.engine.nose_near(models[state], near)
+                if found is not None and nose.kind:
+                    close = pytest.approx(nose.loading, abs=1e-6 * (1.0 + abs(nose.loading)))
+                    assert found.loading == close, (spec.name, state, k)
+
+
+@pytest.mark.parametrize("seed", range(20))
+def test_near_noses(seed: int) -> None:
+    """A nose found beside a near one, where one is found, is the nose traced from the operating point."""
+    _near_noses(seed)
+
+
+@pytest.mark.xfail(strict=True, reason="the near search lands on another branch")
+@pytest.mark.parametrize("seed", [26, 45])
+def test_near_noses_with_several_branches(seed: int) -> None:
+    """The same where strong compensation gives a case several branches of solutions."""
+    _near_noses(seed)
 
 
 @pytest.mark.slow
@@ -244,28 +286,28 @@ def test_order_of_rows(seed: int, change: Change) -> None:
     assert one.status == other.status
     assert one.bound == pytest.approx(other.bound)
     if one.steps is not None:
-        assert other.steps is not None
-        assert is_close(one.problem.cost(one.steps), other.problem.cost(other.steps))
+        assert cost_of(one) == pytest.approx(cost_of(other))
 
 
 def test_workers() -> None:
-    """One thread and two give the same plan, bound and proof."""
+    """One thread and two give the same plan, bound, proof and margins."""
     study = random_study(3)[0].study
-    one, two = solve(prepare(study), 1, None), solve(prepare(study), 2, None)
-    assert (one.status, one.steps, one.bound) == (two.status, two.steps, two.bound)
+    one, two = size(study, workers=1), size(study, workers=2)
+    assert (one.status, one.plan, one.cost_bound) == (two.status, two.plan, two.cost_bound)
     assert one.proof == two.proof
+    assert one.cases_after == two.cases_after
 
 
 def test_more_candidates_never_cost_more() -> None:
-    """A further candidate, or a further step, leaves the least cost or lowers it."""
-    for seed in (0, 3, 5):
+    """A step more at every candidate leaves the least cost or lowers it; here it does both."""
+    saved = []
+    for seed in (8, 23, 39):
         study = random_study(seed)[0].study
         rows = study.candidates
         less = replace(study, candidates=tuple(replace(row, max_steps=max(row.max_steps - 1, 1)) for row in rows))
-        few, many = sized(less), sized(study)
-        if few.steps is not None:
-            assert many.steps is not None
-            assert many.problem.cost(many.steps) <= few.problem.cost(few.steps) + 1e-9
+        saved.append(cost_of(sized(less)) - cost_of(sized(study)))
+    assert min(saved) == pytest.approx(0.0)
+    assert max(saved) > 0.0
 
 
 def test_the_comparison_can_fail() -> None:
