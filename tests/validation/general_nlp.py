@@ -118,9 +118,7 @@ def solve(net: NetworkTables, limits: bool, lost: Iterable[str] = ()) -> Answer:
         rules += [above[j] * (q[i] - float(low[i])), below[j] * (float(high[i]) - q[i])]
     x = ca.vertcat(th, v, loading, q, p_slack, above, below)
     equal = ca.vertcat(balance_p, balance_q, held, th[int(at[slack])])
-    programme = ca.nlpsol(
-        "nose", "ipopt", {"x": x, "f": -loading, "g": ca.vertcat(equal, *rules)}, OPTIONS
-    )
+    programme = ca.nlpsol("nose", "ipopt", {"x": x, "f": -loading, "g": ca.vertcat(equal, *rules)}, OPTIONS)
 
     angle = np.deg2rad(net.buses.angle_deg)
     least = np.full(x.shape[0], -np.inf)
