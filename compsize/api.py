@@ -13,13 +13,24 @@ from compsize.margin.curve import nose_curve
 from compsize.margin.pool import default_workers
 from compsize.network.cases import build_case
 from compsize.network.plans import additions
-from compsize.plan.records import CaseMargin, Counts, MarginsResult, NoseCurve, Plan, SizeResult, Verification
+from compsize.plan.records import (
+    CaseMargin,
+    Counts,
+    MarginsResult,
+    NoseCurve,
+    Plan,
+    SizeResult,
+    Verification,
+    VoltageCheck,
+)
 from compsize.report.basis import basis_of
 from compsize.sizing.given import GivenPlan, judged
 from compsize.sizing.rows import rows_after, runner_up
 from compsize.sizing.solve import Clock, Solved, sizing_of
 from compsize.study.records import Study
+from compsize.verify.cases import Cases
 from compsize.verify.plan import verify_plan
+from compsize.verify.voltage import check_voltages
 
 Progress = Callable[[str, int, int | None], None]
 """Told what is going on: a stage in words, how much is done, and of how much (None: not known)."""
@@ -119,7 +130,9 @@ def size(
     chosen = None if solved.steps is None else solved.problem.plan(solved.steps)
     cost = None if solved.steps is None else solved.problem.cost(solved.steps)
     verification = None
+    voltages: tuple[VoltageCheck, ...] = ()
     if chosen is not None:
+        voltages = check_voltages(study, Cases(study, chosen), Cases(study, Plan()))
         if progress is not None:
             progress("independent verification", 0, None)
         verification = _verified(study, chosen, after)
@@ -140,7 +153,7 @@ def size(
         proof=solved.proof,
         cases_before=before,
         cases_after=after,
-        voltages=(),
+        voltages=voltages,
         runners_up=runners,
         verification=verification,
         curves=curves,

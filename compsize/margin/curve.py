@@ -46,6 +46,6 @@ def nose_curve(bench: Bench, model: CaseModel, row: CaseMargin, plan: str, bus: 
         nose_index=len(upper) - 1,
         operating_mw=model.base_mw,
         operating_v_pu=operating,
-        required_mw=None if row.required_mw is None else model.base_mw + row.required_mw,
+        required_mw=row.required_mw,
         nose_kind=nose.kind,  # type: ignore[arg-type]
     )

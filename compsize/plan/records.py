@@ -84,6 +84,7 @@ class NoseCurve:
     """One nose curve for a picture: voltage [pu] of ``bus`` against MW of the load that grows.
 
     Points run from the lightest load over the nose to the lower branch; ``nose_index`` is the nose.
+    ``required_mw`` is the required margin: the required load lies that far above ``operating_mw``.
     ``operating_v_pu`` is None where the base load has no solution.
     """
 

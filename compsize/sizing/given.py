@@ -40,8 +40,7 @@ def faults_of(problem: Problem, judge: Judge, steps: Steps) -> list[str]:
     """Everything a plan breaks, in words: rules of the study, then cases with their shortfall."""
     found = list(problem.broken(steps))
     for check in judge.first_failures(steps, 1_000_000):
-        short = judge.shortfall(check) + check.allowed
-        found.append(f"{judge.case_name(check)} falls {short:.4g} MW short of {check.need:g} MW")
+        found.append(judge.describe(check))
     return found
 
 

@@ -9,6 +9,7 @@ from dataclasses import dataclass
 from compsize.margin.cases import BANK_OUTAGE, CaseSpec, required_mw, steps_lost
 from compsize.sizing.master import Cover
 from compsize.sizing.noses import Noses, Steps
+from compsize.sizing.voltage import VoltageJudge
 
 
 @dataclass(frozen=True)
@@ -23,6 +24,10 @@ class Check:
     need: float
     allowed: float
     bank: int = -1
+
+
+VOLTAGE = -1
+"""Case number of the voltage conditions."""
 
 
 class Judge:
@@ -43,6 +48,7 @@ class Judge:
                 need = required_mw(self.study, bench.grid, spec, intact.model)
             self.bank_need.append(need)
         self.bank_allowed = intact.allowed
+        self.voltage = VoltageJudge(bench)
 
     def checks(self, plan: Steps) -> Iterator[Check]:
         """The cases of a plan, those that killed most first."""
@@ -59,15 +65,29 @@ class Judge:
                 state = (*plan[:k], plan[k] - lost, *plan[k + 1 :])
                 found.append(Check(0, state, need, self.bank_allowed, k))
         found.sort(key=lambda c: -self.kills.get((c.case, c.bank), 0))
+        if self.voltage.asks:
+            # After the noses: a plan with enough margin is needed before voltages are worth solving.
+            found.append(Check(VOLTAGE, plan, 0.0, 0.0))
         return iter(found)
 
     def case_name(self, check: Check) -> str:
         """The name of the case as the tables show it."""
         if check.bank >= 0:
             return f"bank:{self.choices[check.bank].name}"
+        if check.case == VOLTAGE:
+            return "the voltage conditions"
         return self.noses.targets[check.case].spec.name
 
+    def describe(self, check: Check) -> str:
+        """How a plan fails the check, in words."""
+        if check.case == VOLTAGE:
+            return str(self.voltage.fault(check.state))
+        short = self.shortfall(check) + check.allowed
+        return f"{self.case_name(check)} falls {short:.4g} MW short of {check.need:g} MW"
+
     def passes(self, check: Check) -> bool:
+        if check.case == VOLTAGE:
+            return self.voltage.fault(check.state) is None
         value, _ = self.noses.climbed(check.case, check.state, check.need - check.allowed)
         return value >= check.need - check.allowed
 
@@ -84,6 +104,10 @@ class Judge:
         return failed
 
     def shortfall(self, check: Check) -> float:
+        """By how much a case is missed [MW]; of the voltage conditions, by how much the nearest state misses [pu]."""
+        if check.case == VOLTAGE:
+            fault = self.voltage.fault(check.state)
+            return 0.0 if fault is None else fault.excess
         value, _ = self.noses.climbed(check.case, check.state, check.need - check.allowed)
         return math.inf if math.isnan(value) else max(0.0, check.need - check.allowed - value)
 

@@ -65,7 +65,7 @@ def runner_up(problem: Problem, plan: Steps, judge: Judge) -> tuple[RunnerUp, ..
             note = "meets every case, dearer"
             if failures:
                 check = failures[0]
-                note = f"{judge.case_name(check)} falls {judge.shortfall(check) + check.allowed:.2f} MW short"
+                note = judge.describe(check)
             found.append(RunnerUp(problem.plan(steps), problem.cost(steps), not failures, note))
     found.sort(key=lambda r: r.cost)
     return tuple([r for r in found if r.meets][:3] + [r for r in found if not r.meets][:3])

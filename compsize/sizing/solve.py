@@ -9,7 +9,7 @@ from dataclasses import dataclass
 from compsize.margin.assess import Bench
 from compsize.margin.pool import run_all
 from compsize.plan.records import Proof, ProofPart, Status
-from compsize.sizing.judge import Judge
+from compsize.sizing.judge import VOLTAGE, Judge
 from compsize.sizing.noses import Noses, Steps
 from compsize.sizing.problem import Problem, build_problem
 from compsize.sizing.search import Search
@@ -26,6 +26,7 @@ NO_PLAN = "No plan of these candidates meets the requirement."
 UNFINISHED = "The bound rests on covers; the plans before the answer are too many to walk, or the walk was cut short."
 COVER_ASSUMPTION = "the margin of a case does not rise and fall again inside a box of plans that a cover closes"
 WALK_ASSUMPTION = "none beyond the located noses"
+VOLTAGE_ASSUMPTION = "none beyond the solved states: every state of switched steps breaks a voltage condition"
 RULE_ASSUMPTION = "none: they break a rule of the study"
 
 
@@ -127,7 +128,8 @@ class Sizing:
         todo = [c for c, t in enumerate(noses.targets) if t.model.evaluable]
         self.say(stage, 0, len(todo))
         run_all(lambda c: noses.margin(c, start), todo, self.workers, lambda k: self.say(stage, k, len(todo)))
-        for check in sorted(judge.checks(start), key=lambda c: noses.margin(c.case, c.state) - c.need):
+        known = [check for check in judge.checks(start) if check.case != VOLTAGE]
+        for check in sorted(known, key=lambda c: noses.margin(c.case, c.state) - c.need):
             judge.kills[check.case, check.bank] = len(noses.targets) - len(judge.kills)
 
     def _covers(self, sentence: str, count: int | None = None) -> Proof:
@@ -174,10 +176,12 @@ class Sizing:
         )
 
     def _proved(self, outcome: Walked, count: int) -> Solved:
-        parts = (
+        parts: tuple[ProofPart, ...] = (
             ProofPart("walk", outcome.excluded, WALK_ASSUMPTION),
             ProofPart("rules", outcome.by_rule, RULE_ASSUMPTION),
         )
+        if self.judge.voltage.asks:
+            parts = (*parts, ProofPart("voltages", outcome.by_voltage, VOLTAGE_ASSUMPTION))
         answer = self.search.found.plan
         if answer is None:
             sentence = f"All {count} plans of the candidates were walked: each fails a case or breaks a rule."
@@ -185,7 +189,7 @@ class Sizing:
             return self._solved("unreachable", NO_PLAN, None, self._reach(), None, proof)
         sentence = (
             f"All {count} plans that come before this one (cheaper, or equal in cost with fewer sites or steps) were "
-            "walked; each fails a case whose nose was located, or breaks a rule of the study."
+            "walked; each fails a case whose nose was located, or breaks a voltage condition or a rule of the study."
         )
         proof = Proof("full", sentence, count, parts)
         return self._solved("optimal", LEAST_COST, answer, answer, self.problem.cost(answer), proof)

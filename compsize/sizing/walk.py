@@ -13,10 +13,10 @@ from collections.abc import Callable, Iterator
 from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass
 
-from compsize.sizing.judge import Judge
+from compsize.sizing.judge import VOLTAGE, Judge
 from compsize.sizing.problem import COST_TOLERANCE, Problem, Steps
 
-RULE, FAILS, OPEN, MEETS = "breaks a rule", "fails", "open", "meets"
+RULE, FAILS, VOLTAGE_FAILS, OPEN, MEETS = "breaks a rule", "fails", "fails by voltage", "open", "meets"
 CHUNK = 64
 
 
@@ -28,6 +28,7 @@ class Walked:
     plans: int
     excluded: int
     by_rule: int
+    by_voltage: int
     better: Steps | None
     open_plans: tuple[Steps, ...]
     finished: bool
@@ -85,13 +86,13 @@ class Walk:
     ) -> Walked:
         """Walk ``plans``; ends early when ``stop`` says so or a better plan turns up."""
         finished = 0
-        excluded = by_rule = 0
+        excluded = by_rule = by_voltage = 0
         unsure: list[Steps] = []
         ranked = sorted(plans, key=self.problem.rank)
         with ThreadPoolExecutor(max_workers=max(1, self.workers)) as pool:
             for chunk in _chunks(ranked, CHUNK * max(1, self.workers)):
                 if stop():
-                    return Walked(finished, excluded, by_rule, None, tuple(unsure), False)
+                    return Walked(finished, excluded, by_rule, by_voltage, None, tuple(unsure), False)
                 if self.workers > 1:
                     parts = list(pool.map(self._verdicts, _chunks(chunk, max(1, CHUNK // 4))))
                     verdicts = [verdict for part in parts for verdict in part]
@@ -100,14 +101,15 @@ class Walk:
                 for plan, verdict in zip(chunk, verdicts, strict=True):
                     excluded += verdict == FAILS
                     by_rule += verdict == RULE
+                    by_voltage += verdict == VOLTAGE_FAILS
                     if verdict == OPEN:
                         unsure.append(plan)
                     finished += 1
                     if verdict == MEETS:
-                        return Walked(finished, excluded, by_rule, plan, tuple(unsure), False)
+                        return Walked(finished, excluded, by_rule, by_voltage, plan, tuple(unsure), False)
                 if done is not None:
                     done(finished, len(ranked))
-        return Walked(finished, excluded, by_rule, None, tuple(unsure), True)
+        return Walked(finished, excluded, by_rule, by_voltage, None, tuple(unsure), True)
 
     def _verdicts(self, plans: list[Steps]) -> list[str]:
         return [self._verdict(plan) for plan in plans]
@@ -123,9 +125,13 @@ class Walk:
             if n > 0 and (lower := (*plan[:k], n - 1, *plan[k + 1 :])) in self.killer
         ]
         order = {key: -first.count(key) for key in first}
-        checks.sort(key=lambda c: order.get((c.case, c.bank), 0))
+        checks.sort(key=lambda c: (c.case == VOLTAGE, order.get((c.case, c.bank), 0)))
         unsure = False
         for check in checks:
+            if check.case == VOLTAGE:
+                if not unsure and not self.judge.passes(check):
+                    return VOLTAGE_FAILS
+                continue
             own = noses.margin(check.case, check.state)
             if own >= check.need - check.allowed:
                 continue
