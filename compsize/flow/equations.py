@@ -174,8 +174,11 @@ def residual(pattern, case, state, lam, piece, out):  # type: ignore[no-untyped-
     for k in range(case.taps.shape[0]):
         i = case.taps[k, 0]
         s = case.segptr[i] + state.seg[i]
-        floating = v[case.taps[k, 3]] if case.hold[s] else v[i]
-        out[2 * i + 1] = floating - case.coef[s, 0]
+        # Oriented like a held voltage, so that the determinant keeps its sign when the ratio reaches its limit.
+        if case.hold[s]:
+            out[2 * i + 1] = case.tapval[k, 5] * (v[case.taps[k, 3]] - case.coef[s, 0])
+        else:
+            out[2 * i + 1] = v[i] - case.coef[s, 0]
         worst = max(worst, abs(out[2 * i + 1]))
     return worst if np.isfinite(worst) else np.inf
 
@@ -212,7 +215,7 @@ def factorise(pattern, case, state, lam, factors, pin, alpha):  # type: ignore[n
             if case.hold[s]:
                 for k in range(case.taps.shape[0]):
                     if case.taps[k, 0] == i:
-                        row[case.taps[k, 3], 3] = 1.0
+                        row[case.taps[k, 3], 3] = case.tapval[k, 5]
             else:
                 row[i, 3] = 1.0
             sign *= eliminate_row(i, pattern, factors)

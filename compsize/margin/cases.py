@@ -37,13 +37,13 @@ def listed_cases(study: Study) -> tuple[CaseSpec, ...]:
 
 
 def bank_cases(study: Study, choices: Sequence[Choice], new: Sequence[int]) -> tuple[CaseSpec, ...]:
-    """Loss of one installed step of a bank, or of a whole SVC or STATCOM, for each equipment in service."""
+    """Loss of one installed step of a bank, or of a whole SVC or STATCOM, for each equipment with new steps."""
     if study.contingencies.bank_outage == "none":
         return ()
     return tuple(
         CaseSpec(f"bank:{choice.name}", BANK_OUTAGE, (), k)
         for k, (choice, steps) in enumerate(zip(choices, new, strict=True))
-        if steps + choice.existing > 0 and (study.contingencies.bank_outage == "step" or steps > 0)
+        if steps > 0
     )
 
 

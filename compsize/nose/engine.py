@@ -37,6 +37,9 @@ Floats = NDArray[np.float64]
 FOLD, LIMIT, NONE, UNRESOLVED = "fold", "limit", "none", ""
 LONGEST_STEP = 0.05
 LIFT = 0.015
+# A nose found straight from a near one may lie so far from it [pu, rad].
+NEAR_V = 0.06
+NEAR_TH = 0.3
 # First, longest and shortest leap [pu of the pinned magnitude]; from so many nodes on, leaps cost less than events.
 LEAPS = (0.02, 0.08, 0.006)
 LEAP_NODES = 500
@@ -274,6 +277,9 @@ class Engine:
         work.whole[PIECE] = 0 if pieces == 2 else int(np.searchsorted(case.gbreak, near.loading, side="right")) - 1
         outcome = direct(self.grid.pattern, case, state, bench.factors, work, near.culprit, near.sign)
         if outcome not in (AT_FOLD, AT_LIMIT):
+            return None
+        if np.abs(state.v - near.point.v).max() > NEAR_V or np.abs(state.th - near.point.th).max() > NEAR_TH:
+            # Not the same nose moved a little: the path decides.
             return None
         direction = work.d1.copy()
         if outcome == AT_FOLD:

@@ -176,7 +176,7 @@ def response(pattern, case, state, factors, work, i, old):  # type: ignore[no-un
     s = case.segptr[i] + old
     tap = case.tapof[i]
     if tap >= 0:
-        return z[2 * case.taps[tap, 3] + 1] if case.hold[s] else z[2 * i + 1]
+        return case.tapval[tap, 5] * z[2 * case.taps[tap, 3] + 1] if case.hold[s] else z[2 * i + 1]
     if case.hold[s]:
         return z[2 * i + 1]
     slope = reactive_slope(pattern, case, state, lam, i, z, 0.0)

@@ -57,10 +57,8 @@ class Judge:
             for c, target in enumerate(self.noses.targets)
             if target.need is not None
         ]
-        site_only = self.study.contingencies.bank_outage == "site"
         for k, need in enumerate(self.bank_need):
-            present = plan[k] > 0 or (self.choices[k].existing > 0 and not site_only)
-            if need is not None and present:
+            if need is not None and plan[k] > 0:
                 lost = steps_lost(self.study, self.choices[k], plan[k])
                 state = (*plan[:k], plan[k] - lost, *plan[k + 1 :])
                 found.append(Check(0, state, need, self.bank_allowed, k))
@@ -103,6 +101,27 @@ class Judge:
                     break
         return failed
 
+    def thresholds(self) -> dict[int, tuple[float, ...]]:
+        """Margins [MW] per case number below which a requirement is missed (several for the intact network)."""
+        found: dict[int, set[float]] = {}
+        for c, target in enumerate(self.noses.targets):
+            if target.need is not None:
+                found.setdefault(c, set()).add(target.need - target.allowed)
+        for need in self.bank_need:
+            if need is not None:
+                found.setdefault(0, set()).add(need - self.bank_allowed)
+        return {c: tuple(sorted(values)) for c, values in found.items()}
+
+    def confirm(self, plan: Steps) -> bool:
+        """Whether a plan meets everything with every deciding nose traced from the operating point."""
+        for check in self.checks(plan):
+            if check.case == VOLTAGE:
+                continue
+            _, state = self.noses.climbed(check.case, check.state, check.need - check.allowed)
+            if not self.noses.confirm(check.case, state) and not self.passes(check):
+                return False
+        return True
+
     def shortfall(self, check: Check) -> float:
         """By how much a case is missed [MW]; of the voltage conditions, by how much the nearest state misses [pu]."""
         if check.case == VOLTAGE:
@@ -134,4 +153,4 @@ class Judge:
                 else:
                     low = middle
             at[k] = low
-        return Cover(tuple(at), check.bank if check.bank >= 0 and self.choices[check.bank].existing == 0 else -1)
+        return Cover(tuple(at), check.bank)

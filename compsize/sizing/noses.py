@@ -52,6 +52,7 @@ class Noses:
         self._room = max(200, NEAR_BYTES // (60 * bench.grid.count + 2000))
         self._lock = threading.Lock()
         self._best: dict[tuple[int, Steps], float] = {}
+        self._sure: set[tuple[int, Steps]] = set()
         self.count = 0
         self.factorisations = 0
         self.traced = 0
@@ -98,6 +99,9 @@ class Noses:
                 break
         if nose is None:
             nose = self.bench.engine.nose(model, self.bench.base)
+        if nose.traced:
+            with self._lock:
+                self._sure.add((case, state))
         return self._remember(case, state, nose)
 
     def _remember(self, case: int, state: Steps, nose: Nose) -> float:
@@ -119,6 +123,24 @@ class Noses:
         model = self.model(case, state)
         nose = self.bench.engine.nose(model, self.bench.base)
         return self._remember(case, state, nose), nose, model
+
+    def confirm(self, case: int, state: Steps) -> bool:
+        """Trace a nose from the operating point unless that was done; whether the remembered margin stands (to 1e-7).
+
+        What was remembered is corrected; best margins built on it are forgotten.
+        """
+        known = self.margins.get((case, state))
+        if (case, state) in self._sure:
+            return True
+        margin, _, _ = self.trace(case, state)
+        with self._lock:
+            self._sure.add((case, state))
+        scale = 1.0 + abs(self.targets[case].model.mw_per_loading)
+        same = known is not None and (abs(margin - known) <= 1e-7 * scale or (math.isnan(margin) and math.isnan(known)))
+        if not same:
+            with self._lock:
+                self._best = {key: value for key, value in self._best.items() if key[0] != case}
+        return same
 
     def _neighbours(self, case: int, state: Steps) -> list[Nose]:
         found = []

@@ -17,6 +17,9 @@ from compsize.sizing.walk import Walk, Walked, count_before, plans_before
 
 WALK_CAP = 400_000
 FEW_PLANS = 3_000
+# Up to so many evaluated noses every one that falls short is traced again; of more, one in ten.
+TRACE_ALL = 5_000
+TRACE_SHARE = 10
 Tell = Callable[[str, int, int | None], None]
 
 NOTHING_TO_BUILD = "Every case already keeps its margin; nothing needs to be built."
@@ -75,6 +78,8 @@ class Sizing:
         self.means = means
         self.search = Search(problem, judge)
         self.walked = 0
+        self.traced = 0
+        self.flips = 0
 
     def _solved(
         self, status: Status, sentence: str, steps: Steps | None, shown: Steps, bound: float | None, proof: Proof
@@ -162,6 +167,16 @@ class Sizing:
                 break
             if not outcome.finished or outcome.open_plans:
                 break
+            if found.plan is not None and not self.judge.confirm(found.plan):
+                # The answer's own noses did not stand: it is no answer, and nothing is left of the walk but its noses.
+                self.flips += 1
+                found.plan = None
+                again = self.search.greedy(self.clock.over)
+                if again is not None:
+                    self.search.accept(again)
+                continue
+            if not self._stands(walk):
+                continue
             return self._proved(outcome, len(plans))
         rest = self._covers(UNFINISHED, count)
         if found.plan is None:
@@ -175,6 +190,17 @@ class Sizing:
             "feasible", sentence, found.plan, found.plan, min(found.bound, problem.cost(found.plan)), rest
         )
 
+    def _stands(self, walk: Walk) -> bool:
+        """Trace the noses the proof rests on: all, or a tenth where there are many, and all if one of them changes."""
+        share = 1 if self.noses.count <= TRACE_ALL else TRACE_SHARE
+        self.say("proof: noses traced again", 0, None)
+        traced, changed = walk.confirm(share)
+        if changed and share > 1:
+            traced, changed = walk.confirm(1)
+        self.traced = traced
+        self.flips += changed
+        return changed == 0
+
     def _proved(self, outcome: Walked, count: int) -> Solved:
         parts: tuple[ProofPart, ...] = (
             ProofPart("walk", outcome.excluded, WALK_ASSUMPTION),
@@ -185,13 +211,13 @@ class Sizing:
         answer = self.search.found.plan
         if answer is None:
             sentence = f"All {count} plans of the candidates were walked: each fails a case or breaks a rule."
-            proof = Proof("full", sentence, count, parts)
+            proof = Proof("full", sentence, count, parts, self.traced, self.flips)
             return self._solved("unreachable", NO_PLAN, None, self._reach(), None, proof)
         sentence = (
             f"All {count} plans that come before this one (cheaper, or equal in cost with fewer sites or steps) were "
             "walked; each fails a case whose nose was located, or breaks a voltage condition or a rule of the study."
         )
-        proof = Proof("full", sentence, count, parts)
+        proof = Proof("full", sentence, count, parts, self.traced, self.flips)
         return self._solved("optimal", LEAST_COST, answer, answer, self.problem.cost(answer), proof)
 
     def _reach(self) -> Steps:

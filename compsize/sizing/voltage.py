@@ -121,7 +121,7 @@ class VoltageJudge:
         found = [(spec, state) for spec in self.events]
         if self.bench.study.contingencies.bank_outage != "none":
             for k, choice in enumerate(self.bench.choices):
-                if state[k] + choice.existing > 0:
+                if state[k] > 0:
                     lost = steps_lost(self.bench.study, choice, state[k])
                     at = (*state[:k], state[k] - lost, *state[k + 1 :])
                     found.append((CaseSpec(f"bank:{choice.name}", "bank_outage", (), k), at))

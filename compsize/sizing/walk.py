@@ -111,6 +111,28 @@ class Walk:
                     done(finished, len(ranked))
         return Walked(finished, excluded, by_rule, by_voltage, None, tuple(unsure), True)
 
+    def confirm(self, share: int) -> tuple[int, int]:
+        """Trace every ``share``-th nose that fell short of a requirement; how many, and how many verdicts changed.
+
+        Only a margin that comes to lie on the other side of its requirement changes a verdict.
+        """
+        noses = self.judge.noses
+        needs = self.judge.thresholds()
+        short = sorted(
+            key for key, margin in noses.margins.items() if any(margin < need for need in needs.get(key[0], ()))
+        )
+
+        def stands(key: tuple[int, Steps]) -> bool:
+            before = noses.margins[key]
+            noses.confirm(*key)
+            after = noses.margins[key]
+            return all((before < need) == (after < need) for need in needs[key[0]])
+
+        chosen = short[::share]
+        with ThreadPoolExecutor(max_workers=max(1, self.workers)) as pool:
+            kept = list(pool.map(stands, chosen))
+        return len(chosen), kept.count(False)
+
     def _verdicts(self, plans: list[Steps]) -> list[str]:
         return [self._verdict(plan) for plan in plans]
 

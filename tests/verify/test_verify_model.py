@@ -116,8 +116,8 @@ def test_pickup_limits_change_the_nose_at_the_breakpoint_only() -> None:
 
 
 def test_lost_generation_is_shared_by_the_units_left() -> None:
-    """Loss of C (20 MW): by p_mw over the 70 MW of the units left, B takes 4/7 of it; the slack alone by ``slack``."""
-    assert power(made(ring(), [("generator", "C")]), 0.0) == pytest.approx([40.0 + 20.0 * 40.0 / 70.0])
+    """Loss of C (20 MW): by p_mw over the 100 MW of load, B takes 40 % of it; the slack alone by ``slack``."""
+    assert power(made(ring(), [("generator", "C")]), 0.0) == pytest.approx([40.0 + 20.0 * 40.0 / 100.0])
     assert power(made(ring(), [("generator", "C")], pickup="slack"), 0.0) == pytest.approx([40.0])
     assert power(made(ring(), [("generator", "C")], pickup="table"), 0.0) == pytest.approx([60.0])
 
@@ -126,7 +126,7 @@ def test_a_lost_slack_passes_to_the_largest_unit() -> None:
     """Without A the unit with most MW, B, balances; C takes its part of the 30 MW that A gave."""
     model = made(ring(), [("generator", "A")])
     assert model.buses[model.slack_bus] == "2"
-    assert power(model, 0.0) == pytest.approx([20.0 + 30.0 * 20.0 / 60.0])
+    assert power(model, 0.0) == pytest.approx([20.0 + 30.0 * 20.0 / 100.0])
     assert any("slack passes to B" in note for note in model.notes)
 
 
