@@ -108,7 +108,6 @@ def test_independent_path(point: str, taps: str, line: str) -> None:
     assert margin(point, taps, line) == pytest.approx(mw, abs=1e-5)
 
 
-@pytest.mark.xfail(strict=True, reason="a ratio at its end is taken for a limit-induced nose")
 @pytest.mark.parametrize("point", POINTS)
 def test_a_ratio_at_its_end_is_no_nose(point: str) -> None:
     """Without line 4061-4062 the ratio of transformer 61-4061 ends on the way; the path goes on to its nose."""
