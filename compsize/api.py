@@ -135,7 +135,7 @@ def size(
         voltages = check_voltages(study, Cases(study, chosen), Cases(study, Plan()))
         if progress is not None:
             progress("independent verification", 0, None)
-        verification = _verified(study, chosen, after)
+        verification = _verified(study, chosen, after, solved.status == "optimal")
     curves = _curves(bench, solved, before, after)
     gap = None
     if cost is not None and solved.bound is not None:
@@ -179,9 +179,9 @@ def size(
     )
 
 
-def _verified(study: Study, plan: Plan, after: Sequence[CaseMargin]) -> Verification:
+def _verified(study: Study, plan: Plan, after: Sequence[CaseMargin], least: bool) -> Verification:
     required = {row.case: row.required_mw for row in after if row.required_mw is not None}
-    return verify_plan(study, plan, after, required)
+    return verify_plan(study, plan, after, required, least=least)
 
 
 def _curves(

@@ -162,10 +162,8 @@ class Sizing:
             count = len(plans)
             if outcome.better is not None:
                 self.search.accept(outcome.better)
-                if not outcome.open_plans:
-                    continue
-                break
-            if not outcome.finished or outcome.open_plans:
+                continue
+            if not outcome.finished:
                 break
             if found.plan is not None and not self.judge.confirm(found.plan):
                 # The answer's own noses did not stand: it is no answer, and nothing is left of the walk but its noses.
@@ -177,6 +175,8 @@ class Sizing:
                 continue
             if not self._stands(walk):
                 continue
+            if outcome.open_plans:
+                break
             return self._proved(outcome, len(plans))
         rest = self._covers(UNFINISHED, count)
         if found.plan is None:

@@ -109,9 +109,6 @@ def test_nose_agrees_with_the_second_opinion(name: str, lost: Lost) -> None:
     _agrees(tables(name), lost, "locked")
 
 
-@pytest.mark.xfail(
-    strict=True, reason="a tap changer that regulates its 'to' side is taken for a limit-induced nose at its limit"
-)
 @pytest.mark.parametrize("lost", NETWORKS["everything"])
 def test_nose_with_moving_taps_agrees_with_the_second_opinion(lost: Lost) -> None:
     """The same with tap changers that move, on either side of their branch."""

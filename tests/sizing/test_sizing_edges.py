@@ -180,11 +180,6 @@ def test_a_case_that_cannot_be_evaluated_is_not_met() -> None:
     assert "source cut off" in result.sentence
 
 
-@pytest.mark.xfail(
-    strict=True,
-    reason="search and second opinion disagree on whether the loss of a step of a bank that exists, but to which the "
-    "plan adds nothing, is a case",
-)
 def test_loss_of_a_step_of_an_existing_bank() -> None:
     """Where an existing bank gets no new step the result passes its own verification."""
     rows = (Candidate("4", BANK, 4, 120.0, existing_steps=2), Candidate("2", BANK, 4, 100.0))

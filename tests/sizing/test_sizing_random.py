@@ -196,10 +196,6 @@ def test_random_studies(seed: int) -> None:
     compare(seed)
 
 
-@pytest.mark.xfail(
-    strict=True,
-    reason="a nose found beside a near one lies on another branch, and the walk rests on it without a trace",
-)
 @pytest.mark.parametrize("seed", [2385, 3244, 3334, 4347])
 def test_random_studies_with_several_branches(seed: int) -> None:
     """The same where strong compensation gives a case several branches of solutions."""
