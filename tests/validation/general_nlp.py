@@ -132,7 +132,8 @@ def solve(net: NetworkTables, limits: bool, lost: Iterable[str] = ()) -> Answer:
         start[2 * n + 1 + i] = 0.5 * (low[i] + high[i])
     least[2 * n + 2 + len(units) :] = 0.0
     zero = np.zeros(equal.shape[0])
-    iterations, solved, found = 0, True, {"x": start, "lam_x": None, "lam_g": None}
+    iterations, solved = 0, True
+    found: dict[str, Any] = {"x": start}
     for relaxed in RELAXED if limited else FREE:
         found = programme(
             x0=found["x"],
