@@ -55,9 +55,9 @@ def main() -> None:
         "# Effort and speed",
         "",
         f"Written by `docs/make_performance.py` ({platform.machine()}, Python {platform.python_version()}, one thread).",
-        "Seconds are the shortest of several runs on a shared machine and say little beyond their order; the counters",
+        "Seconds are the shortest of several runs on a shared machine and say little beyond their order; counters",
         "are the same everywhere, and those of the smaller networks are asserted in `tests/performance`.",
-        "Networks: PGLib-OPF v23.07 (arXiv:1908.02788, CC BY 4.0), all loads growing, reactive limits of units in force.",
+        "Networks: PGLib-OPF v23.07 (arXiv:1908.02788, CC BY 4.0), all loads growing, reactive limits of units held.",
         f"From {LEAP_NODES} nodes on long steps go ahead of the trace.",
         "",
         "| network | factorisations of the intact nose | ms | factorisations, mean of some 40 outages | ms "
