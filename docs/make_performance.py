@@ -54,7 +54,7 @@ def main() -> None:
     lines = [
         "# Effort and speed",
         "",
-        f"Written by `docs/make_performance.py` ({platform.machine()}, Python {platform.python_version()}, one thread).",
+        f"Written by `docs/make_performance.py` ({platform.machine()}, one thread).",
         "Seconds are the shortest of several runs on a shared machine and say little beyond their order; counters",
         "are the same everywhere, and those of the smaller networks are asserted in `tests/performance`.",
         "Networks: PGLib-OPF v23.07 (arXiv:1908.02788, CC BY 4.0), all loads growing, reactive limits of units held.",

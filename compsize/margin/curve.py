@@ -23,10 +23,11 @@ def nose_curve(bench: Bench, model: CaseModel, row: CaseMargin, plan: str, bus: 
     points = [(float(p[0]), float(p[1 + node])) for p in nose.log]
     operating = None if nose.base is None else float(nose.base.v[node])
     lighter = []
-    if nose.base is not None and model.base_mw > 0.0:
-        at = nose.base
+    first = 0.0 if nose.base is not None or not points else points[0][0]
+    at = nose.base if nose.base is not None else bench.engine.settle(model, bench.engine.flat(model), first)
+    if at is not None and model.base_mw > 0.0:
         for k in range(1, 11):
-            loading = -0.095 * k * model.base_mw / model.mw_per_loading
+            loading = first - 0.095 * k * (model.base_mw / model.mw_per_loading + first)
             found = bench.engine.settle(model, at, loading)
             if found is None:
                 break
