@@ -17,7 +17,7 @@ if TYPE_CHECKING:
 
 __all__ = ["command", "exit_code"]
 
-Means = Literal["auto", "full", "covers", "relaxation"]
+Means = Literal["auto", "full", "covers"]
 
 
 @click.command("size", short_help="The least-cost plan, with proof.")
@@ -32,7 +32,7 @@ Means = Literal["auto", "full", "covers", "relaxation"]
 )
 @click.option(
     "--proof",
-    type=click.Choice(["auto", "full", "covers", "relaxation"]),
+    type=click.Choice(["auto", "full", "covers"]),
     default="auto",
     show_default=True,
     help="What the bound on the cost shall rest on.",
