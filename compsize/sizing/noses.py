@@ -56,7 +56,6 @@ class Noses:
         self.count = 0
         self.factorisations = 0
         self.traced = 0
-        self.unresolved = 0
 
     def model(self, case: int, state: Steps) -> CaseModel:
         """The case with the steps of ``state`` on."""
@@ -110,7 +109,6 @@ class Noses:
             self.count += 1
             self.factorisations += nose.factorisations
             self.traced += nose.traced
-            self.unresolved += not nose.kind
             self.margins[case, state] = margin
             if nose.kind:
                 self._near[case, state] = nose
@@ -199,6 +197,3 @@ class Noses:
                 return value, at
             at, value = best_state, best_value
         return value, at
-
-    def kept_nose(self, case: int, state: Steps) -> Nose | None:
-        return self._near.get((case, state))

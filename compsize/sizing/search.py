@@ -11,7 +11,7 @@ from collections.abc import Callable
 from dataclasses import dataclass, field
 
 from compsize.sizing.judge import Check, Judge
-from compsize.sizing.master import Cover, Master
+from compsize.sizing.master import Master
 from compsize.sizing.problem import Problem, Steps
 
 RAISINGS = 4
@@ -128,6 +128,3 @@ class Search:
         cheap = sorted(range(count), key=lambda k: unit[k])
         spread = sorted(range(count), key=lambda k: (k * 7 + check.case * 3 + len(self.master.covers)) % max(count, 1))
         return [list(range(count)), list(range(count - 1, -1, -1)), cheap, spread][:RAISINGS]
-
-
-__all__ = ["Cover", "Found", "Search"]
